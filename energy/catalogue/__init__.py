@@ -1,0 +1,1 @@
+"""Published equations, factors and limits as data: one file per publication."""

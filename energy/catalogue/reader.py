@@ -1,0 +1,430 @@
+"""Reads catalogue files into systems, and refuses entries that break a rule.
+
+The same reader serves the files of this package and a house file of the user's own.
+"""
+
+from __future__ import annotations
+
+import csv
+import tomllib
+from collections.abc import Mapping
+from functools import cache
+from pathlib import Path
+from typing import Any
+
+from energy.catalogue.records import (
+    ABSENT,
+    ROUTES,
+    SOURCE_STATUS,
+    STAGES,
+    TARGETS,
+    TWINS,
+    Bound,
+    Check,
+    Component,
+    DerivedRule,
+    Publication,
+    Symbol,
+    System,
+    weakest,
+)
+from energy.formula import Formula, parse
+from energy.problems import CatalogueProblem, FormulaProblem, UnitProblem
+from energy.quantities import dictionary
+from energy.units import parse_unit
+
+FOLDER = Path(__file__).parent
+#: quantities that exist only by a rule of derived.toml
+DERIVED_ONLY = ("carbohydrate_all", "solids")
+NOT_SYSTEMS = ("derived", "targets", "component_heats", "food_matrix", "measured_vs_computed")
+
+
+def read_file(path: Path) -> list[System]:
+    """Every system of one catalogue file. Raises CatalogueProblem with the place and the cure."""
+    where = path.name
+    try:
+        raw = tomllib.loads(path.read_text(encoding="utf-8"))
+    except (OSError, UnicodeDecodeError, tomllib.TOMLDecodeError, RecursionError) as error:
+        raise CatalogueProblem(where, f"it cannot be read ({error}).", "Mend the TOML.") from None
+    about = _need(raw, "publication", dict, where)
+    publication = Publication(
+        key=str(about.get("key", path.stem)),
+        citation=str(_need(about, "citation", str, f"{where}, publication")),
+        note=str(about.get("note", "")),
+    )
+    systems: list[System] = []
+    for entry in raw.get("factor_table", []):
+        systems.extend(_factor_table(entry, publication, path))
+    for entry in raw.get("equation", []):
+        systems.append(_equation(entry, publication, path))
+    return systems
+
+
+def _need(entry: Mapping[str, Any], key: str, kind: type, where: str) -> Any:
+    if key not in entry:
+        raise CatalogueProblem(where, f"'{key}' is missing.", f"Give {key} = ... .")
+    if not isinstance(entry[key], kind):
+        raise CatalogueProblem(where, f"'{key}' has the wrong type.", f"It must be a {kind.__name__}.")
+    return entry[key]
+
+
+def _one_of(entry: Mapping[str, Any], key: str, allowed: Any, where: str, default: str | None = None) -> str:
+    value = entry.get(key, default)
+    if value is None:
+        raise CatalogueProblem(where, f"'{key}' is missing.", f"One of: {', '.join(allowed)}.")
+    if value not in allowed:
+        raise CatalogueProblem(where, f"{key} = '{value}' is not known.", f"One of: {', '.join(allowed)}.")
+    return str(value)
+
+
+def _common(entry: Mapping[str, Any], publication: Publication, path: Path) -> dict[str, Any]:
+    identity = _need(entry, "id", str, path.name)
+    where = f"{path.name}, {identity}"
+    targets = tuple(_need(entry, "target", list, where))
+    for target in targets:
+        if target not in TARGETS:
+            raise CatalogueProblem(where, f"target '{target}' is not known.", f"One of: {', '.join(TARGETS)}.")
+    status = _one_of(entry, "source_status", SOURCE_STATUS, where)
+    locator = str(_need(entry, "locator", str, where))
+    if not publication.citation.strip() or not locator.strip():
+        raise CatalogueProblem(where, "a number without its place in a source.", "Give citation and locator.")
+    nitrogen = entry.get("nitrogen_factor", "own")
+    if nitrogen == "" or (isinstance(nitrogen, str) and nitrogen != "own"):
+        raise CatalogueProblem(where, f"nitrogen_factor '{nitrogen}' is not known.", "A number, or 'own'.")
+    return {
+        "id": identity,
+        "title": str(_need(entry, "title", str, where)),
+        "targets": targets,
+        "stage": _one_of(entry, "stage", STAGES, where),
+        "kind": str(entry.get("kind", "")),
+        "route": _one_of(entry, "route", ROUTES, where),
+        "law": bool(entry.get("law", False)),
+        "body": str(entry.get("body", "")),
+        "bomb_allowed": str(entry.get("bomb_allowed", "unknown")),
+        "nitrogen_factor": nitrogen if nitrogen == "own" else float(nitrogen),
+        "citation": publication.citation,
+        "locator": locator,
+        "source_status": status,
+        "excludes": tuple(entry.get("excludes", ())),
+        "domain_words": str(entry.get("domain_words", "")),
+        "note": str(entry.get("note", "")),
+        "file": path.name,
+        "checks": tuple(_check(c, where) for c in entry.get("check", ())),
+    }
+
+
+def _check(entry: Mapping[str, Any], where: str) -> Check:
+    return Check(
+        name=str(_need(entry, "name", str, where)),
+        inputs={str(k): float(v) for k, v in _need(entry, "inputs", dict, where).items()},
+        inputs_unit=str(entry.get("inputs_unit", "")),
+        units={str(k): str(v) for k, v in entry.get("units", {}).items()},
+        text={str(k): str(v) for k, v in entry.get("text", {}).items()},
+        expected=float(entry["expected"]),
+        unit=str(_need(entry, "unit", str, where)),
+        tolerance=float(entry["tolerance"]),
+        kind=_one_of(entry, "kind", ("published", "worked_by_hand"), where),
+        source=str(_need(entry, "source", str, where)),
+        source_status=_one_of(entry, "source_status", SOURCE_STATUS, where),
+        note=str(entry.get("note", "")),
+    )
+
+
+def _known_quantity(name: str, where: str) -> str:
+    if name not in dictionary() and name not in DERIVED_ONLY:
+        raise CatalogueProblem(where, f"'{name}' is not a quantity of the dictionary.", "Add it to quantities.toml.")
+    return name
+
+
+def _absent(entry: Mapping[str, Any], where: str) -> tuple[str, str]:
+    absent = _one_of(entry, "absent", ABSENT, where, default="missing_input")
+    return absent, str(entry.get("absent_then", ""))
+
+
+def _formula(text: str, where: str) -> Formula:
+    try:
+        return parse(text)
+    except FormulaProblem as problem:
+        raise CatalogueProblem(where, str(problem), "") from problem
+
+
+def _unit(text: str, dimension: str | None, where: str) -> Any:
+    try:
+        return parse_unit(text, dimension)
+    except UnitProblem as problem:
+        raise CatalogueProblem(where, str(problem), "") from problem
+
+
+def _split_any(text: str) -> tuple[str, bool]:
+    bare = text.removesuffix(" any basis").removesuffix(" any")
+    return bare, bare != text
+
+
+# ---- factor tables ----------------------------------------------------------------------------------------
+
+
+def _factor_table(entry: Mapping[str, Any], publication: Publication, path: Path) -> list[System]:
+    common = _common(entry, publication, path)
+    where = f"{path.name}, {common['id']}"
+    leading = _one_of(entry, "leading", ("kJ", "kcal"), where)
+    twin = _one_of(entry, "twin", TWINS, where)
+    basis = str(entry.get("basis", "as_is"))
+    lines = _need(entry, "component", list, where)
+    other = "kcal" if leading == "kJ" else "kJ"
+    systems = [_sum_of_components(common, lines, leading, basis, path)]
+    if twin == "factors":
+        twin_id = f"{common['id']}_{other.lower()}"
+        second = {**common, "id": twin_id, "title": f"{common['title']} ({other} factors)", "checks": ()}
+        systems.append(_sum_of_components(second, lines, other, basis, path, twin="factors", twin_of=common["id"]))
+        common["twin_id"] = twin_id
+    systems[0] = _sum_of_components(common, lines, leading, basis, path, twin=twin)
+    checks = systems[0].checks
+    if twin == "factors":  # each check belongs to the sum in its own unit
+        import dataclasses
+
+        own = tuple(c for c in checks if c.unit.startswith(leading))
+        theirs = tuple(c for c in checks if not c.unit.startswith(leading))
+        systems = [dataclasses.replace(systems[0], checks=own), dataclasses.replace(systems[1], checks=theirs)]
+    return systems
+
+
+def _sum_of_components(
+    common: Mapping[str, Any], lines: list[dict[str, Any]], unit: str, basis: str, path: Path, **extra: Any
+) -> System:
+    where = f"{path.name}, {common['id']}"
+    symbols: dict[str, Symbol] = {}
+    components: list[Component] = []
+    terms: list[str] = []
+    statuses = [common["source_status"]]
+    for line in lines:
+        component = _component(line, unit, where)
+        components.append(component)
+        statuses.append(component.source_status)
+        names = [_amount_symbol(q, component if q == component.quantity else None, basis, symbols, where)
+                 for q in (component.quantity, *component.subtract)]  # fmt: skip
+        amount = names[0] if len(names) == 1 else f"({' - '.join(names)})"
+        if component.factor is None:
+            factor = _table_symbol(line, symbols, where)
+            terms.append(f"{factor}*{amount}")
+        elif component.factor != 0.0:
+            terms.append(f"{component.factor:g}*{amount}")
+        else:
+            terms.append(f"0*{amount}")
+    return System(
+        **{**common, "source_status": weakest(statuses)},
+        formula=_formula(" + ".join(terms), where),
+        symbols=symbols,
+        result_unit=f"{unit}/g",
+        result_scale=_unit(f"{unit}/g", "energy", where).scale,
+        result_basis=basis,
+        energy_family="J" if unit == "kJ" else "cal",
+        by_group=any("table" in line and "slug" not in line for line in lines),
+        components=tuple(components),
+        **extra,
+    )
+
+
+def _component(line: Mapping[str, Any], unit: str, where: str) -> Component:
+    name = str(_need(line, "name", str, where))
+    place = f"{where}, {name}"
+    if "table" not in line and unit not in line:
+        raise CatalogueProblem(place, f"no factor in {unit} per g.", f"Give {unit} = ... , or twin = 'none'.")
+    absent, then = _absent(line, place)
+    return Component(
+        name=name,
+        quantity=_known_quantity(str(_need(line, "quantity", str, place)), place),
+        subtract=tuple(_known_quantity(str(q), place) for q in line.get("subtract", ())),
+        factor=None if "table" in line else float(line[unit]),
+        absent=absent,
+        absent_then=then,
+        source_status=_one_of(line, "source_status", SOURCE_STATUS, place),
+        locator=str(line.get("locator", "")),
+        note=str(line.get("note", "")),
+    )
+
+
+def quantity_symbol(quantity: str) -> str:
+    """The symbol a quantity gets in a generated formula."""
+    entry = dictionary().get(quantity)
+    return entry.symbol if entry else {"carbohydrate_all": "C_all", "solids": "S_all"}[quantity]
+
+
+def _amount_symbol(
+    quantity: str, component: Component | None, basis: str, symbols: dict[str, Symbol], where: str
+) -> str:
+    _known_quantity(quantity, where)
+    name = quantity_symbol(quantity)
+    if name not in symbols or component is not None:
+        absent = component.absent if component else "zero"
+        then = component.absent_then if component else ""
+        symbols[name] = Symbol(name=name, unit="g/g", quantity=quantity, basis=basis, absent=absent, absent_then=then)
+    return name
+
+
+def _table_symbol(line: Mapping[str, Any], symbols: dict[str, Symbol], where: str) -> str:
+    name = "f_" + str(line["row"])
+    symbols[name] = Symbol(
+        name=name,
+        unit=f"{line['unit']}/g",
+        table=str(line["table"]),
+        row=str(line["row"]),
+        column=str(line["column"]),
+        slug=line.get("slug"),
+    )
+    return name
+
+
+# ---- equations --------------------------------------------------------------------------------------------
+
+
+def _equation(entry: Mapping[str, Any], publication: Publication, path: Path) -> System:
+    common = _common(entry, publication, path)
+    where = f"{path.name}, {common['id']}"
+    formula = _formula(str(_need(entry, "formula", str, where)), where)
+    heats = _formula(entry["heats"], where) if "heats" in entry else None
+    result, any_basis = _split_any(str(_need(entry, "result", str, where)))
+    dimension = "fraction" if common["stage"] == "digestibility" else "energy"
+    unit = _unit(result, dimension, where)
+    declared = _need(entry, "symbols", dict, where)
+    symbols = {name: _symbol(name, s, unit.scale, where) for name, s in declared.items()}
+    unknown = sorted((formula.symbols | (heats.symbols if heats else frozenset())) - set(symbols))
+    if unknown:
+        raise CatalogueProblem(where, f"the formula uses {', '.join(unknown)}.", "Say what they are under symbols.")
+    unused = sorted(set(symbols) - formula.symbols - (heats.symbols if heats else frozenset()))
+    if unused:
+        raise CatalogueProblem(where, f"symbols never used: {', '.join(unused)}.", "Take them out.")
+    bounds = []
+    for b in entry.get("domain", ()):
+        if b.get("symbol") not in symbols and b.get("symbol") != "result":
+            raise CatalogueProblem(where, f"the domain names '{b.get('symbol')}'.", "Use a symbol of the formula.")
+        bounds.append(Bound(b["symbol"], b.get("low"), b.get("high"), str(b.get("locator", ""))))
+    return System(
+        **common,
+        formula=formula,
+        heats=heats,
+        symbols=symbols,
+        result_unit=unit.display,
+        result_scale=unit.scale,
+        result_basis="any" if any_basis else (unit.basis or "as_is"),
+        energy_family=unit.energy_family or "",
+        by_group=any(s.table and s.slug is None and s.fallback is None for s in symbols.values()),
+        residual_sd=entry.get("residual_sd"),
+        r2=entry.get("r2"),
+        domain=tuple(bounds),
+        requires_methods={k: tuple(v) for k, v in entry.get("requires_methods", {}).items()},
+    )
+
+
+def _symbol(name: str, entry: Mapping[str, Any], result_scale: float, where: str) -> Symbol:
+    place = f"{where}, symbol {name}"
+    if sum(k in entry for k in ("quantity", "constant", "table")) != 1:
+        raise CatalogueProblem(place, "it is neither a quantity, a constant nor a table.", "Give exactly one.")
+    text, any_basis = _split_any(str(_need(entry, "unit", str, place)))
+    common: dict[str, Any] = {
+        "name": name,
+        "unit": str(entry["unit"]),
+        "note": str(entry.get("note", entry.get("u_note", ""))),
+    }
+    if "quantity" in entry:
+        quantity = _known_quantity(str(entry["quantity"]), place)
+        known = dictionary().get(quantity)
+        unit = _unit(text, known.dimension if known else "mass_fraction", place)
+        absent, then = _absent(entry, place)
+        fixed = known is not None and known.basis != "stated"
+        basis = "any" if any_basis else (None if fixed else unit.basis or "as_is")
+        return Symbol(**common, quantity=quantity, scale=unit.scale, basis=basis, absent=absent, absent_then=then)
+    unit = _unit(text, None, place) if text not in ("", "1") else None
+    # energies per gram enter a formula in the unit of its result, percentages as fractions
+    scale = 1.0 if unit is None else unit.scale / (result_scale if unit.dimension == "energy" else 1.0)
+    scale = 1.0 if abs(scale - 1.0) < 1e-12 else scale
+    if "constant" in entry:
+        return Symbol(**common, constant=float(entry["constant"]), scale=scale, u=float(entry.get("u", 0.0)))
+    fallback = entry.get("fallback")
+    return Symbol(
+        **common,
+        table=str(entry["table"]),
+        row=str(entry["row"]),
+        column=str(_need(entry, "column", str, place)),
+        slug=entry.get("slug"),
+        fallback=None if fallback is None else float(fallback),
+        scale=scale,
+        u=float(entry.get("u", 0.0)),
+        fallback_u=float(entry.get("fallback_u", 0.0)),
+    )
+
+
+# ---- tables, derived quantities, the whole catalogue --------------------------------------------------------
+
+
+@cache
+def table(file: str) -> dict[tuple[str, str], dict[str, str]]:
+    """A printed table: (slug, component) -> its row as text. `component` is empty where a table has none."""
+    with (FOLDER / file).open(encoding="utf-8", newline="") as handle:
+        return {(row["slug"], row.get("component", "")): row for row in csv.DictReader(handle)}
+
+
+@cache
+def food_groups() -> dict[str, dict[str, str]]:
+    """slug -> title and nitrogen factor (empty where the group does not fix one) of every food group."""
+    return {slug: row for (slug, _), row in table("food_groups.csv").items()}
+
+
+@cache
+def derived_rules() -> dict[str, tuple[DerivedRule, ...]]:
+    """quantity -> the ways to get it, best first."""
+    raw = tomllib.loads((FOLDER / "derived.toml").read_text(encoding="utf-8"))
+    rules: dict[str, list[DerivedRule]] = {}
+    for entry in raw["rule"]:
+        where = f"derived.toml, {entry['quantity']}"
+        requires = tuple(str(r) for r in entry["requires"])
+        rules.setdefault(entry["quantity"], []).append(
+            DerivedRule(
+                quantity=entry["quantity"],
+                formula=_formula(entry["formula"], where),
+                requires=tuple(r.removesuffix(":given") for r in requires),
+                given=frozenset(r.removesuffix(":given") for r in requires if r.endswith(":given")),
+                optional=dict(entry.get("optional", {})),
+                words=entry["words"],
+                source=entry["source"],
+                source_status=entry["source_status"],
+            )
+        )
+    return {name: tuple(found) for name, found in rules.items()}
+
+
+@cache
+def targets() -> dict[str, dict[str, Any]]:
+    """Defaults per target, with their reasons."""
+    raw = tomllib.loads((FOLDER / "targets.toml").read_text(encoding="utf-8"))
+    return {name: entry for name, entry in raw.items() if name in TARGETS}
+
+
+@cache
+def systems() -> dict[str, System]:
+    """Every shipped system by id."""
+    found: dict[str, System] = {}
+    for path in sorted(FOLDER.glob("*.toml")):
+        if path.stem not in NOT_SYSTEMS:
+            _join(found, read_file(path))
+    return found
+
+
+def with_house(path: str | Path) -> dict[str, System]:
+    """The shipped systems and those of a house file; the same rules hold for both."""
+    found = dict(systems())
+    _join(found, read_file(Path(path)))
+    return found
+
+
+def _join(found: dict[str, System], more: list[System]) -> None:
+    for system in more:
+        if system.id in found:
+            raise CatalogueProblem(system.file, f"the id '{system.id}' is there twice.", "Choose another id.")
+        found[system.id] = system
+
+
+@cache
+def food_matrix() -> tuple[dict[str, Any], ...]:
+    """Where food structure hides energy from the eater: food groups, forms, words, source."""
+    raw = tomllib.loads((FOLDER / "food_matrix.toml").read_text(encoding="utf-8"))
+    return tuple(raw["matrix"])

@@ -1,0 +1,491 @@
+"""Samples x systems -> blocks of value, u and status; and pairs of systems -> differences and their parts.
+
+For each signature of rows (resolve.py) all formulas are substituted down to measured columns, differentiated, and
+written as one piece of numpy that runs over chunks of rows small enough to stay in cache. Blocks are
+(systems, n) arrays in MJ/kg on the batch's working basis.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+from functools import lru_cache
+from typing import Any
+
+import numpy as np
+
+from energy import algebra
+from energy.algebra import Node
+from energy.catalogue.reader import derived_rules
+from energy.catalogue.records import System
+from energy.resolve import Parameter, Resolver, Signature, signatures
+from energy.samples import Samples
+
+CHUNK = 16_384
+#: worst last
+STATUS = (
+    "ok", "assumed", "outside_domain", "method_mismatch", "missing_input", "missing_factor", "not_admissible",
+    "problem",
+)  # fmt: skip
+OK, ASSUMED, OUTSIDE, METHOD, MISSING, NO_FACTOR, NOT_ADMISSIBLE, PROBLEM = range(8)
+
+#: which amount a table row belongs to; a missing row matters where the amount is present
+ROW_AMOUNT = {
+    "protein": "crude_protein",
+    "fat": "crude_fat",
+    "carbohydrate": "carbohydrate_all",
+    "alcohol": "alcohol",
+}
+
+_FUNCTIONS: dict[str, Any] = {
+    name: getattr(np, name) for name in ("exp", "log", "sqrt", "minimum", "maximum", "where", "power")
+}
+
+
+@dataclass(frozen=True)
+class Pair:
+    """A bomb system against a composition system; heats names the system of best component heats."""
+
+    stage: str
+    bomb: str
+    composition: str
+    heats: str
+
+
+@dataclass
+class Blocks:
+    """Results of a batch. (systems, n) and (pairs, n); MJ/kg on `basis`.
+
+    difference = bomb - composition = measurement + heats + convention. u_measurement holds the inputs' share,
+    u_model that of the component heats. at_heats is the bomb system's result for the computed gross energy, to
+    which percentages and limits of the measurement part refer.
+    """
+
+    systems: tuple[str, ...]
+    pairs: tuple[Pair, ...]
+    basis: str
+    value: np.ndarray
+    u: np.ndarray
+    status: np.ndarray
+    difference: np.ndarray
+    u_difference: np.ndarray
+    measurement: np.ndarray
+    u_measurement: np.ndarray
+    u_model: np.ndarray
+    heats: np.ndarray
+    convention: np.ndarray
+    at_heats: np.ndarray
+
+    def row(self, system: str) -> int:
+        """Index of a system."""
+        return self.systems.index(system)
+
+
+@dataclass(frozen=True)
+class Plan:
+    """Compiled arithmetic for one signature."""
+
+    run: Callable[[list[np.ndarray], list[np.ndarray]], None]
+    inputs: tuple[str, ...]
+    outputs: tuple[tuple[str, int], ...]
+    parameters: Mapping[str, Parameter]
+    computed: tuple[bool, ...]
+    status: tuple[SystemStatus, ...]
+    nonlinear: tuple[bool, ...]
+
+
+@dataclass(frozen=True)
+class SystemStatus:
+    """What decides a system's status in rows of one signature."""
+
+    base: int
+    required: tuple[str, ...] = ()
+    optional: tuple[str, ...] = ()
+    factors: tuple[tuple[str, str], ...] = ()  # (parameter, output name of the amount)
+    methods: tuple[tuple[str, tuple[str, ...]], ...] = ()
+    bounds: tuple[tuple[str, float | None, float | None], ...] = ()
+
+
+PARTS = ("difference", "measurement", "heats", "convention")
+PAIR_OUTPUTS = (
+    "difference", "u_difference", "measurement", "u_measurement", "u_model", "heats", "convention", "at_heats",
+)  # fmt: skip
+
+
+# ---- writing the arithmetic ---------------------------------------------------------------------------------
+
+
+@lru_cache(maxsize=256)
+def plan(signature: Signature, columns: frozenset[str], systems: tuple[BySystem, ...], pairs: tuple[Pair, ...]) -> Plan:
+    """The compiled plan of a signature; remembered, so that a second batch of the same shape costs nothing."""
+    resolver = Resolver(signature, columns)
+    chosen = [s.system for s in systems]
+    nodes = [_system_node(resolver, s) for s in chosen]
+    index = {s.id: i for i, s in enumerate(chosen)}
+    roots: dict[tuple[str, int], Node] = {}
+    for i, node in enumerate(nodes):
+        if node is not None:
+            roots["value", i] = node
+            roots["u", i] = algebra.apply("sqrt", _variance(node))
+    for p, pair in enumerate(pairs):
+        _pair_roots(resolver, pair, p, chosen, nodes, index, roots)
+    status = tuple(
+        _system_status(resolver, s, node, i, roots) for i, (s, node) in enumerate(zip(chosen, nodes, strict=True))
+    )
+    ready = [(p, index[pair.bomb], index[pair.composition]) for p, pair in enumerate(pairs) if ("at_heats", p) in roots]
+    run, inputs, outputs = _compile(roots, ready)
+    return Plan(
+        run=run,
+        inputs=inputs,
+        outputs=outputs,
+        parameters=dict(resolver.parameters),
+        computed=tuple(node is not None for node in nodes),
+        status=status,
+        nonlinear=tuple(node is not None and _nonlinear(node) for node in nodes),
+    )
+
+
+@dataclass(frozen=True, eq=False)
+class BySystem:
+    """A system that is equal to another by identity of its record: plans are remembered by it."""
+
+    system: System
+
+    def __hash__(self) -> int:
+        return id(self.system)
+
+    def __eq__(self, other: object) -> bool:
+        return isinstance(other, BySystem) and other.system is self.system
+
+
+def _system_node(resolver: Resolver, system: System) -> Node | None:
+    if system.by_group and resolver.signature.group == 0:
+        return None
+    return resolver.system(system)
+
+
+def _variance(node: Node) -> Node:
+    measured = {n: ("**", "U:" + n, 2.0) for n in algebra.names(node) if not n.startswith(("@", "V@"))}
+    return algebra.variance(node, measured)
+
+
+def _nonlinear(node: Node) -> bool:
+    if isinstance(node, tuple) and node[0] == "lin":
+        return any(_nonlinear(child) for child in algebra.children(node))
+    return isinstance(node, tuple) and node[0] != "*"
+
+
+def _pair_roots(
+    resolver: Resolver,
+    pair: Pair,
+    p: int,
+    systems: Sequence[System],
+    nodes: Sequence[Node | None],
+    index: Mapping[str, int],
+    roots: dict[tuple[str, int], Node],
+) -> None:
+    bomb, composition = nodes[index[pair.bomb]], nodes[index[pair.composition]]
+    best = nodes[index[pair.heats]]
+    if bomb is None or composition is None or best is None:
+        return
+    system = systems[index[pair.bomb]]
+    at_heats = resolver.system(system, gross_energy=best)
+    if at_heats is None:
+        return
+    # a bomb system without heats of its own (US method (E), Miller & Payne) has no heats part: it takes GE as it comes
+    at_own = resolver.system(system, gross_energy="heats") if system.heats is not None else at_heats
+    difference = algebra.subtract(bomb, composition)
+    measurement = algebra.subtract(bomb, at_heats)
+    model = resolver.model_variance(systems[index[pair.heats]])
+    gain = _gross_energy_gain(resolver, system)
+    roots["u_difference", p] = algebra.apply("sqrt", _variance(difference))
+    roots["at_heats", p] = at_heats
+    roots["at_own", p] = at_own
+    roots["u_measurement", p] = algebra.apply("sqrt", _variance(measurement))
+    roots["u_model", p] = algebra.apply("sqrt", algebra.multiply(algebra.power(gain, 2.0), model))
+
+
+def _gross_energy_gain(resolver: Resolver, system: System) -> Node:
+    """Slope of a bomb system's result with respect to gross energy, both in MJ/kg."""
+    probe = "gross energy"
+    node = resolver.system(system, gross_energy=probe)
+    return algebra.slope(node, probe) if node is not None else 0.0
+
+
+def _system_status(
+    resolver: Resolver, system: System, node: Node | None, i: int, roots: dict[tuple[str, int], Node]
+) -> SystemStatus:
+    if node is None:
+        return SystemStatus(base=MISSING)
+    used = algebra.names(node)
+    required = tuple(sorted(n for n in used if not n.startswith(("@", "V@")) and not n.endswith("?")))
+    optional = {n[:-1] for n in used if n.endswith("?") and is_listed(system, n[:-1])}
+    base = OK
+    for symbol in system.symbols.values():
+        if symbol.absent == "zero_and_listed" and symbol.quantity:
+            there = resolver.quantity(symbol.quantity, system.nitrogen_factor, filled=True)
+            if isinstance(there, float):
+                base = ASSUMED
+    if assumes_nitrogen_factor(resolver, system):
+        base = ASSUMED
+    factors = []
+    for name in sorted(n for n in used if n.startswith("@") and n != "@nitrogen_factor"):
+        parameter = resolver.parameters[name]
+        if parameter.missing.any():
+            amount = _amount_of(resolver, system, parameter.row)
+            if amount is not None:
+                key = f"amount of {parameter.row}"
+                roots[key, i] = amount
+                factors.append((name, key))
+    bounds = []
+    for bound in system.domain:
+        target = node if bound.symbol == "result" else resolver.symbol(system.symbols[bound.symbol], system)
+        if target is not None:
+            key = f"domain {bound.symbol}"
+            roots[key, i] = target
+            bounds.append((key, bound.low, bound.high))
+    return SystemStatus(
+        base=base,
+        required=required,
+        optional=tuple(sorted(optional)),
+        factors=tuple(factors),
+        methods=tuple(system.requires_methods.items()),
+        bounds=tuple(bounds),
+    )
+
+
+def is_listed(system: System, quantity: str) -> bool:
+    """True where a quantity counted as zero must be told: the system, or a rule it rests on, says so."""
+    direct = [s.absent for s in system.symbols.values() if s.quantity == quantity]
+    if direct:
+        return "zero_and_listed" in direct
+    if quantity == "nitrogen_factor":
+        return True
+    used = {s.quantity for s in system.symbols.values()}
+    return any(rule.optional.get(quantity) for name in used if name for rule in derived_rules().get(name, ()))
+
+
+def _amount_of(resolver: Resolver, system: System, row: str) -> Node | None:
+    for symbol in system.symbols.values():
+        if symbol.quantity and (symbol.quantity == ROW_AMOUNT.get(row) or row in symbol.quantity):
+            return resolver.quantity(symbol.quantity, system.nitrogen_factor, filled=symbol.absent != "missing_input")
+    return None
+
+
+def assumes_nitrogen_factor(resolver: Resolver, system: System) -> bool:
+    """True where protein had to be turned into nitrogen, or back, with a factor nobody stated."""
+    if "nitrogen_factor" in resolver.columns:
+        return False
+    uses = any(s.quantity in ("crude_protein", "carbohydrate_all", "carbohydrate_by_difference", "nitrogen")
+               for s in system.symbols.values())  # fmt: skip
+    as_protein = resolver.choices.get("nitrogen", -1) != 0
+    if not uses:
+        return False
+    if system.nitrogen_factor == "own":
+        return not as_protein or resolver.signature.group == 1
+    return as_protein
+
+
+def _compile(
+    roots: Mapping[tuple[str, int], Node], pairs: Sequence[tuple[int, int, int]]
+) -> tuple[Callable[[list[np.ndarray], list[np.ndarray]], None], tuple[str, ...], tuple[tuple[str, int], ...]]:
+    """One numpy function for all roots. pairs: (pair, row of the bomb system, row of the composition system)."""
+    inputs = tuple(sorted(set().union(*(algebra.names(n) for n in roots.values()))))
+    variables = {name: f"v{k}" for k, name in enumerate(inputs)}
+    source = algebra.Source(roots.values(), variables)
+    place: dict[tuple[str, int], int] = {}
+    for key in [k for k in roots if k[0] != "at_own"] + [(kind, p) for p, _, _ in pairs for kind in PARTS]:
+        place[key] = len(place)
+    lines: list[str] = []
+    for key, node in roots.items():
+        text = source.text(node)
+        lines.extend(source.lines)
+        source.lines.clear()
+        lines.append(f"own{key[1]} = {text}" if key[0] == "at_own" else f"out[{place[key]}][...] = {text}")
+    for p, b, c in pairs:
+        bomb, composition = f"out[{place['value', b]}]", f"out[{place['value', c]}]"
+        at_heats = f"out[{place['at_heats', p]}]"
+        lines += [
+            f"out[{place['difference', p]}][...] = {bomb} - {composition}",
+            f"out[{place['measurement', p]}][...] = {bomb} - {at_heats}",
+            f"out[{place['heats', p]}][...] = {at_heats} - own{p}",
+            f"out[{place['convention', p]}][...] = own{p} - {composition}",
+        ]
+    body = ["def run(v, out):", *(f"    {variables[n]} = v[{k}]" for k, n in enumerate(inputs))]
+    body += [f"    {line}" for line in lines] or ["    pass"]
+    space: dict[str, Any] = {}
+    # our own text: registered names, numbers and the functions above, nothing else can be in it
+    exec(compile("\n".join(body), "<systems>", "exec"), {"__builtins__": {}, **_FUNCTIONS}, space)
+    return space["run"], inputs, tuple(place)
+
+
+# ---- running it -----------------------------------------------------------------------------------------------
+
+
+def evaluate(samples: Samples, systems: Sequence[System], pairs: Sequence[Pair] = ()) -> Blocks:
+    """Blocks of a batch for the systems and pairs named. Every pair's systems must be among `systems`."""
+    n, s, p = len(samples), len(systems), len(pairs)
+    found = signatures(samples)
+    blocks = Blocks(
+        systems=tuple(x.id for x in systems),
+        pairs=tuple(pairs),
+        basis=found[0][0].working if found else "as_is",
+        value=np.empty((s, n)),
+        u=np.empty((s, n)),
+        status=np.empty((s, n), dtype=np.int8),
+        **{name: np.empty((p, n)) for name in PAIR_OUTPUTS},
+    )
+    columns = frozenset(samples.columns)
+    wanted = tuple(BySystem(x) for x in systems)
+    with np.errstate(all="ignore"):
+        for signature, rows in found:
+            _run(samples, plan(signature, columns, wanted, tuple(pairs)), rows, blocks)
+    return blocks
+
+
+def _run(samples: Samples, plan: Plan, rows: np.ndarray | None, blocks: Blocks) -> None:
+    n = len(samples) if rows is None else len(rows)
+    leaves = [_leaf(samples, name) for name in plan.inputs]
+    codes = samples.memo.get("group_codes")
+    contributions = [_contributions(samples, status) for status in plan.status]
+    outside = [key for key in plan.outputs if key[0].startswith(("amount", "domain"))]
+    spare = {key: np.empty(min(n, CHUNK)) for key in outside} if rows is None else {}
+    for low in range(0, n, CHUNK):
+        high = min(low + CHUNK, n)
+        here: Any = slice(low, high) if rows is None else rows[low:high]
+        inputs = [_take(leaf, name, plan, here, codes) for leaf, name in zip(leaves, plan.inputs, strict=True)]
+        direct = rows is None
+        out = [_target(blocks, key, here, direct, spare, high - low) for key in plan.outputs]
+        plan.run(inputs, out)
+        computed = dict(zip(plan.outputs, out, strict=True))
+        if not direct:
+            for key, array in computed.items():
+                if key not in outside:
+                    getattr(blocks, key[0])[key[1], here] = array
+        for i, status in enumerate(plan.status):
+            _set_status(blocks, plan, i, status, contributions[i], here, computed, codes)
+        for q in range(len(blocks.pairs)):
+            if ("at_heats", q) not in computed:
+                for name in PAIR_OUTPUTS:
+                    getattr(blocks, name)[q, here] = np.nan
+
+
+def _leaf(samples: Samples, name: str) -> np.ndarray | None:
+    """The array behind a name: a column, a column filled with zeros, or a standard uncertainty."""
+    if name.startswith(("@", "V@")):
+        return None
+    if name.startswith("U:"):
+        column = name[2:].removesuffix("?")
+        array = samples.u.get(column, np.full(len(samples), np.nan))
+        return _filled(samples, "U:" + column, array, 0.0) if name.endswith("?") else array
+    if name.endswith("?"):
+        column = name[:-1]
+        return _filled(samples, column, samples.columns[column], 6.25 if column == "nitrogen_factor" else 0.0)
+    return samples.columns[name]
+
+
+def _filled(samples: Samples, key: str, array: np.ndarray, fill: float) -> np.ndarray:
+    """The column with `fill` where it is empty; made once per batch."""
+    memo: dict[str, np.ndarray] = samples.memo.setdefault("filled", {})
+    if key not in memo:
+        empty = np.isnan(array)
+        memo[key] = np.where(empty, fill, array) if empty.any() else array
+    return memo[key]
+
+
+def _take(leaf: np.ndarray | None, name: str, plan: Plan, here: Any, codes: np.ndarray | None) -> np.ndarray:
+    if leaf is not None:
+        return leaf[here]
+    assert codes is not None
+    parameter = plan.parameters[name.removeprefix("V")]
+    return np.take(parameter.variances if name.startswith("V") else parameter.values, codes[here])
+
+
+def _target(
+    blocks: Blocks, key: tuple[str, int], here: Any, direct: bool, spare: dict[tuple[str, int], np.ndarray], n: int
+) -> np.ndarray:
+    if key in spare:
+        return spare[key][:n]
+    if direct and not key[0].startswith(("amount", "domain")):
+        array: np.ndarray = getattr(blocks, key[0])[key[1], here]
+        return array
+    return np.empty(n)
+
+
+def _contributions(samples: Samples, status: SystemStatus) -> list[np.ndarray]:
+    """(n,) int8 arrays whose maximum with the base is the status; only for columns that have gaps."""
+    found = []
+    for column in status.required:
+        found += _gap(samples, column, MISSING)
+    for column in status.optional:
+        found += _gap(samples, column, ASSUMED)
+    for column, allowed in status.methods:
+        found += _method(samples, column, allowed)
+    return found
+
+
+def _gap(samples: Samples, column: str, code: int) -> list[np.ndarray]:
+    memo: dict[tuple[str, int], list[np.ndarray]] = samples.memo.setdefault("gaps", {})
+    if (column, code) not in memo:
+        empty = np.isnan(samples.columns[column])
+        array = np.where(empty, code, OK).astype(np.int8)
+        if column in samples.voided:
+            array[samples.voided[column]] = PROBLEM
+        memo[column, code] = [array] if array.any() else []
+    return memo[column, code]
+
+
+def _method(samples: Samples, column: str, allowed: tuple[str, ...]) -> list[np.ndarray]:
+    if column not in samples.text:
+        return [np.full(len(samples), ASSUMED, dtype=np.int8)]
+    unique, inverse = np.unique(samples.text[column].astype(str), return_inverse=True)
+    codes = [OK if u in allowed else ASSUMED if u in ("None", "", "nan") else METHOD for u in unique]
+    return [np.array(codes, dtype=np.int8)[inverse]]
+
+
+def _set_status(
+    blocks: Blocks,
+    plan: Plan,
+    i: int,
+    status: SystemStatus,
+    contributions: list[np.ndarray],
+    here: Any,
+    computed: Mapping[tuple[str, int], np.ndarray],
+    codes: np.ndarray | None,
+) -> None:
+    if not plan.computed[i]:
+        blocks.status[i, here] = MISSING
+        blocks.value[i, here] = np.nan
+        blocks.u[i, here] = np.nan
+        return
+    if not contributions and not status.factors and not status.bounds and not plan.nonlinear[i]:
+        blocks.status[i, here] = status.base
+        return
+    value = computed["value", i]
+    found = np.full(len(value), status.base, dtype=np.int8)
+    for array in contributions:
+        np.maximum(found, array[here], out=found)
+    for name, key in status.factors:
+        assert codes is not None
+        lacking = plan.parameters[name].missing[codes[here]] & (computed[key, i] > 1e-9)
+        found[lacking] = np.maximum(found[lacking], NO_FACTOR)
+    for key, low, high in status.bounds:
+        x = computed[key, i]
+        beyond = np.zeros(len(x), dtype=bool)
+        if low is not None:
+            beyond |= x < low
+        if high is not None:
+            beyond |= x > high
+        found[beyond] = np.maximum(found[beyond], OUTSIDE)
+    if plan.nonlinear[i]:
+        found[~np.isfinite(value) & (found < METHOD)] = PROBLEM
+    blocks.status[i, here] = found
+    void = found >= MISSING
+    if void.any():
+        rows = np.arange(len(blocks.value[i]))[here][void] if isinstance(here, slice) else here[void]
+        blocks.value[i, rows] = np.nan
+        blocks.u[i, rows] = np.nan
+        for p, pair in enumerate(blocks.pairs):
+            if blocks.systems[i] in (pair.bomb, pair.composition, pair.heats):
+                for name in PAIR_OUTPUTS:
+                    getattr(blocks, name)[p, rows] = np.nan

@@ -1,0 +1,294 @@
+"""Why a difference: its parts by component, and handling errors as hypotheses that are tried on the figures.
+
+A part is a function of component amounts that doubles when all amounts double, so that amount times slope, summed
+over the components, is the part itself (Euler's theorem on homogeneous functions).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from energy import algebra
+from energy.algebra import Node
+from energy.catalogue.reader import derived_rules
+from energy.catalogue.records import System
+from energy.evaluate import Pair
+from energy.resolve import Resolver, Signature, signatures
+from energy.samples import Samples
+
+JOULE_PER_CALORIE = 4.184
+
+#: components a part is told in, and what people call them
+COMPONENTS = {
+    "nitrogen": "protein",
+    "crude_fat": "fat",
+    "rest": "digestible carbohydrate",
+    "sugars": "sugars",
+    "starch": "starch",
+    "total_dietary_fibre": "dietary fibre",
+    "polyols": "polyols",
+    "organic_acids": "organic acids",
+    "alcohol": "alcohol",
+}
+
+
+class ComponentResolver(Resolver):
+    """A resolver whose quantities are sums of components instead of measured columns, for one row."""
+
+    own_factor: float = 6.25
+
+    def quantity(self, name: str, nitrogen_factor: float | str = "own", filled: bool = False) -> Node | None:
+        """Quantities in components; what has no component keeps its measured value (a frozen number)."""
+        factor = self.own_factor if nitrogen_factor == "own" else float(nitrogen_factor)
+        if name == "crude_protein":
+            return algebra.scale(factor, "nitrogen")
+        if name in ("nitrogen", "crude_fat", "alcohol", "total_dietary_fibre", "polyols", "organic_acids"):
+            return name
+        # carbohydrate by difference shrinks by what a larger nitrogen factor makes of the same nitrogen
+        shift = algebra.scale(self.own_factor - factor, "nitrogen") if self._by_difference(name) else 0.0
+        rest: Node = algebra.add("rest", "sugars", "starch", shift)
+        if name in ("carbohydrate_all", "carbohydrate_by_difference", "carbohydrate_total"):
+            return algebra.add(rest, "total_dietary_fibre", "polyols", "organic_acids")
+        if name == "available_carbohydrate":
+            return algebra.add(rest, "polyols")
+        if name in ("sugars", "starch"):
+            return name
+        return super().quantity(name, nitrogen_factor, filled)
+
+    def _by_difference(self, name: str) -> bool:
+        choice = self.choices.get(name, 0)
+        return choice > 0 and "solids" in derived_rules()[name][choice - 1].formula.symbols
+
+
+def parts_by_component(
+    samples: Samples, row: int, pair: Pair, systems: Mapping[str, System], values: Mapping[str, float]
+) -> list[dict[str, Any]]:
+    """Lines of the heats and the convention part of one sample; each part's contributions add up to the part.
+
+    values : component -> amount in kg/kg on the working basis (see `component_amounts`). A line: part, component,
+    amount, bomb, composition, contribution (MJ/kg).
+    """
+    resolver = ComponentResolver(_signature_of(samples, row), frozenset(samples.columns))
+    resolver.own_factor = values["own_factor"]
+    bomb, composition, heats = systems[pair.bomb], systems[pair.composition], systems[pair.heats]
+    best = resolver.system(heats)
+    at_heats = resolver.system(bomb, gross_energy=best)
+    at_own = resolver.system(bomb, gross_energy="heats") if bomb.heats is not None else at_heats
+    other = resolver.system(composition)
+    if at_heats is None or at_own is None or other is None:
+        return []
+    point = dict(values)
+    codes = samples.memo["group_codes"]
+    for name, parameter in resolver.parameters.items():
+        point[name] = float(parameter.values[codes[row]])
+    lines = []
+    for part, first, second in (("heats", at_heats, at_own), ("convention", at_own, other)):
+        for component, words in COMPONENTS.items():
+            amount = point.get(component, 0.0)
+            a = amount * _at(algebra.slope(first, component), point)
+            b = amount * _at(algebra.slope(second, component), point)
+            if amount != 0.0 and (abs(a) > 1e-12 or abs(b) > 1e-12):
+                lines.append(
+                    {
+                        "part": part,
+                        "component": words,
+                        "amount": amount,
+                        "bomb": a,
+                        "composition": b,
+                        "contribution": a - b,
+                    }
+                )
+    return lines
+
+
+def component_amounts(columns: Mapping[str, float], own_factor: float) -> dict[str, float]:
+    """Component amounts of one sample from its quantities on the working basis (kg/kg); absent ones are zero."""
+
+    def get(name: str) -> float:
+        value = columns.get(name, np.nan)
+        return 0.0 if np.isnan(value) else float(value)
+
+    inside = ("total_dietary_fibre", "polyols", "organic_acids", "sugars", "starch")
+    amounts = {name: get(name) for name in (*inside, "crude_fat", "alcohol")}
+    amounts["nitrogen"] = get("crude_protein") / own_factor
+    amounts["rest"] = get("carbohydrate_all") - sum(amounts[name] for name in inside)
+    amounts["own_factor"] = own_factor
+    return amounts
+
+
+def _signature_of(samples: Samples, row: int) -> Signature:
+    for signature, rows in signatures(samples):
+        if rows is None or row in rows:
+            return signature
+    raise IndexError(row)
+
+
+def _at(node: Node, point: Mapping[str, float]) -> float:
+    """A node's value at a point, by walking the tree: one row only, so no need to compile."""
+    if isinstance(node, float):
+        return node
+    if isinstance(node, str):
+        return float(point.get(node, 0.0))
+    head = node[0]
+    if head == "lin":
+        return float(node[1] + sum(k * _at(a, point) for a, k in node[2]))
+    if head == "where":
+        left, right = _at(node[2], point), _at(node[3], point)
+        holds = {"<": left < right, "<=": left <= right, ">": left > right, ">=": left >= right}[node[1]]
+        return _at(node[4] if holds else node[5], point)
+    args = [_at(child, point) for child in algebra.children(node)]
+    if head == "**":
+        return float(args[0] ** node[2])
+    functions: dict[str, Callable[..., float]] = {
+        "*": lambda a, b: a * b, "/": lambda a, b: a / b if b else np.nan, "min": min, "max": max,
+        "exp": np.exp, "log": np.log, "sqrt": np.sqrt,
+    }  # fmt: skip
+    return float(functions[head](*args))
+
+
+# ---- handling errors as hypotheses ----------------------------------------------------------------------------
+
+
+@dataclass(frozen=True)
+class Facts:
+    """What the hypotheses look at: (n,) arrays, energies in MJ/kg, amounts in kg/kg on the working basis."""
+
+    measured: np.ndarray
+    computed: np.ndarray
+    u: np.ndarray
+    limit: np.ndarray
+    dry_matter: np.ndarray
+    fibre: np.ndarray
+    mass_sum: np.ndarray
+    available_given: np.ndarray
+    ether_extract: np.ndarray
+    on_dry_matter: np.ndarray
+
+
+@dataclass(frozen=True)
+class Hypothesis:
+    """A handling error: the corrected measured and computed GE, where it can apply, and what to say and do.
+
+    prior : how common it is, from 0 to 1 (our own judgement). `words` may hold {amount}.
+    """
+
+    id: str
+    prior: float
+    measured: Callable[[Facts], np.ndarray]
+    computed: Callable[[Facts], np.ndarray]
+    applies: Callable[[Facts], np.ndarray]
+    amount: Callable[[Facts], np.ndarray]
+    words: str
+    next_measurement: str
+
+
+def _same_measured(f: Facts) -> np.ndarray:
+    return f.measured
+
+
+def _same_computed(f: Facts) -> np.ndarray:
+    return f.computed
+
+
+def _always(f: Facts) -> np.ndarray:
+    return np.ones(len(f.measured), dtype=bool)
+
+
+def _missing_fat(f: Facts) -> np.ndarray:
+    """kg fat per kg that must sit in carbohydrate by difference instead: 39.3 - 17.4 MJ/kg are gained."""
+    return (f.measured - f.computed) / (39.3 - 17.4)
+
+
+def _powder_moisture(f: Facts) -> np.ndarray:
+    return 1 - f.measured / f.computed
+
+
+# fmt: off
+HYPOTHESES = (
+    Hypothesis("kcal_as_kJ", 0.9, lambda f: f.measured * JOULE_PER_CALORIE, _same_computed, _always,
+               lambda f: f.measured / f.computed,
+               "the gross energy looks like kilocalories entered as kilojoules "
+               "(measured/computed = {amount:.3f}; 1/4.184 = 0.239)",
+               "compare the bomb sheet with the table: which unit was printed?"),
+    Hypothesis("kJ_as_kcal", 0.9, lambda f: f.measured / JOULE_PER_CALORIE, _same_computed, _always,
+               lambda f: f.measured / f.computed,
+               "the gross energy looks like kilojoules entered as kilocalories "
+               "(measured/computed = {amount:.3f}; expected 4.184)",
+               "compare the bomb sheet with the table: which unit was printed?"),
+    Hypothesis("decimal_slip_up", 0.5, lambda f: f.measured / 10, _same_computed, _always,
+               lambda f: f.measured / f.computed, "the gross energy is ten times too large (decimal point)",
+               "compare the bomb sheet with the table"),
+    Hypothesis("decimal_slip_down", 0.5, lambda f: f.measured * 10, _same_computed, _always,
+               lambda f: f.measured / f.computed, "the gross energy is ten times too small (decimal point)",
+               "compare the bomb sheet with the table"),
+    Hypothesis("dry_matter_as_is", 0.8, lambda f: f.measured * f.dry_matter, _same_computed,
+               lambda f: ~f.on_dry_matter & (f.dry_matter < 0.97), lambda f: 100 * f.dry_matter,
+               "the gross energy fits dry matter, not the material as it is (dry matter {amount:.1f} %)",
+               "ask on which basis the bomb value was reported"),
+    Hypothesis("as_is_as_dry_matter", 0.6, lambda f: f.measured / f.dry_matter, _same_computed,
+               lambda f: f.on_dry_matter & (f.dry_matter < 0.97), lambda f: 100 * f.dry_matter,
+               "the gross energy fits the material as it is, not dry matter (dry matter {amount:.1f} %)",
+               "ask on which basis the bomb value was reported"),
+    Hypothesis("powder_moisture_forgotten", 0.6, _same_computed, _same_computed,
+               lambda f: f.on_dry_matter & (_powder_moisture(f) > 0.02) & (_powder_moisture(f) < 0.1),
+               lambda f: 100 * _powder_moisture(f),
+               "the powder's residual moisture was probably left out: "
+               "{amount:.1f} % of water in the powder would explain it",
+               "determine the moisture of the powder that was burned, on the day of the pellets"),
+    Hypothesis("fibre_twice", 0.7, _same_measured, lambda f: f.computed - 17.4 * f.fibre,
+               lambda f: f.available_given & (f.fibre > 0.005)
+               & (np.isnan(f.mass_sum) | (np.abs(f.mass_sum - 1 - f.fibre) < 0.5 * f.fibre)),
+               lambda f: 100 * f.fibre,
+               "the available carbohydrate seems to hold the fibre already: {amount:.1f} g per 100 g are counted twice",
+               "look whether 'carbohydrate' on the certificate is with or without fibre"),
+    Hypothesis("ether_extract", 0.6, _same_measured, _same_measured,
+               lambda f: f.ether_extract & (_missing_fat(f) > 0.005) & (_missing_fat(f) < 0.12),
+               lambda f: 100 * _missing_fat(f),
+               "fat was extracted without acid hydrolysis: {amount:.1f} g of bound fat per 100 g, "
+               "now inside carbohydrate by difference, would explain it",
+               "repeat the fat determination with acid hydrolysis"),
+)
+# fmt: on
+
+
+def rank(facts: Facts, rows: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """Probable cause and next measurement, as texts, for the rows marked; empty elsewhere.
+
+    A hypothesis closes a difference if the corrected figures differ by less than the practical limit. Among those
+    that close, the one with the largest prior * likelihood of the remaining difference is named; a cause that tunes
+    an amount to fit (fat, moisture) closes by construction and competes by its prior alone.
+    """
+    n = len(facts.measured)
+    best = np.zeros(n)
+    cause = np.full(n, "", dtype=object)
+    following = np.full(n, "", dtype=object)
+    with np.errstate(all="ignore"):
+        for h in HYPOTHESES:
+            remaining = h.measured(facts) - h.computed(facts)
+            closes = rows & h.applies(facts) & (np.abs(remaining) <= facts.limit)
+            weight = np.where(closes, h.prior * np.exp(-0.5 * (remaining / facts.u) ** 2), 0.0)
+            better = weight > np.maximum(best, 1e-6)
+            amount = h.amount(facts)
+            for i in np.flatnonzero(better):
+                cause[i] = h.words.format(amount=amount[i])
+                following[i] = h.next_measurement
+            best = np.where(better, weight, best)
+        _by_size(facts, rows & (best == 0), cause, following)
+    return cause, following
+
+
+def _by_size(facts: Facts, rows: np.ndarray, cause: np.ndarray, following: np.ndarray) -> None:
+    """No hypothesis fits: what each determination would have to be wrong by (g per 100 g), largest lever first."""
+    gap = facts.measured - facts.computed
+    for i in np.flatnonzero(rows):
+        moisture, fat, protein = 100 * gap[i] / 17.4, 100 * gap[i] / (39.3 - 17.4), 100 * gap[i] / (23.6 - 17.4)
+        cause[i] = (
+            f"nothing specific fits; alone, {abs(moisture):.1f} g of moisture (too {'high' if gap[i] > 0 else 'low'}), "
+            f"{abs(fat):.1f} g of fat or {abs(protein):.1f} g of protein (too {'low' if gap[i] > 0 else 'high'}) "
+            "per 100 g would explain it"
+        )
+        following[i] = "repeat the moisture of the sample, then fat; a determined carbohydrate would tell them apart"

@@ -1,0 +1,113 @@
+"""The dictionary of quantities, read from quantities.toml once.
+
+Internal units: mass fractions and other fractions as kg/kg, energies as MJ/kg, density as g/ml.
+"""
+
+from __future__ import annotations
+
+import re
+import tomllib
+from dataclasses import dataclass, field
+from functools import cache
+from pathlib import Path
+from typing import Any
+
+#: text columns of a table; `sample_id` is needed, the rest are optional
+TEXT_COLUMNS = (
+    "sample_id",
+    "name",
+    "target",
+    "food_group",
+    "form",
+    "origin",
+    "batch",
+    "note",
+)
+
+#: what one unit of a TOML range or default_u is worth in internal units
+DISPLAY_SCALE = {
+    "mass_fraction": 0.01,
+    "fraction": 0.01,
+    "energy": 1.0,
+    "density": 1.0,
+    "number": 1.0,
+}
+
+
+@dataclass(frozen=True, slots=True)
+class Quantity:
+    """One entry of the dictionary.
+
+    dimension : mass_fraction, fraction, energy (per mass), density or number.
+    basis : "stated" (the table must say it) or the one the quantity has by its meaning.
+    range : plausible bounds in internal units. default_u : (absolute, relative) in internal units.
+    """
+
+    name: str
+    title: str
+    symbol: str
+    dimension: str
+    basis: str
+    range: tuple[float, float]
+    synonyms: tuple[str, ...]
+    infoods: tuple[str, ...] = ()
+    method_column: str | None = None
+    methods: tuple[str, ...] = ()
+    default_u: tuple[float, float] | None = None
+    default_u_source: str = ""
+    default_u_status: str = ""
+    note: str = ""
+    header_implies: dict[str, str] = field(default_factory=dict)
+
+
+def normal_form(text: str) -> str:
+    """A header word without case, punctuation and spacing: 'Crude  Protein' and 'crude_protein' meet."""
+    return re.sub(r"[\s_\-,;:.()/]+", " ", text.strip().lower()).strip()
+
+
+@cache
+def dictionary() -> dict[str, Quantity]:
+    """name -> Quantity, in the order of the file."""
+    raw = tomllib.loads(Path(__file__).with_suffix(".toml").read_text(encoding="utf-8"))
+    return {name: _quantity(name, entry) for name, entry in raw.items()}
+
+
+def _quantity(name: str, entry: dict[str, Any]) -> Quantity:
+    scale = DISPLAY_SCALE[entry["dimension"]]
+    low, high = entry["range"]
+    default = entry.get("default_u")
+    return Quantity(
+        name=name,
+        title=entry["title"],
+        symbol=entry["symbol"],
+        dimension=entry["dimension"],
+        basis=entry["basis"],
+        range=(low * scale, high * scale),
+        synonyms=tuple(entry["synonyms"]),
+        infoods=tuple(entry.get("infoods", ())),
+        method_column=entry.get("method_column"),
+        methods=tuple(entry.get("methods", ())),
+        default_u=(default[0] * scale, default[1]) if default else None,
+        default_u_source=entry.get("default_u_source", ""),
+        default_u_status=entry.get("default_u_status", ""),
+        note=entry.get("note", ""),
+        header_implies=dict(entry.get("header_implies", {})),
+    )
+
+
+@cache
+def synonym_index() -> dict[str, str]:
+    """normal form of every name, synonym and INFOODS tagname -> quantity name."""
+    index: dict[str, str] = {}
+    for quantity in dictionary().values():
+        for word in (quantity.name, *quantity.synonyms, *quantity.infoods):
+            form = normal_form(word)
+            if index.setdefault(form, quantity.name) != quantity.name:
+                raise ValueError(f"'{word}' names both {index[form]} and {quantity.name}")
+    return index
+
+
+@cache
+def method_columns() -> dict[str, Quantity]:
+    """method column (fat_method ...) -> the quantity it speaks of."""
+    return {q.method_column: q for q in dictionary().values() if q.method_column}

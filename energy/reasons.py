@@ -1,0 +1,438 @@
+"""What an assessment says in words: why a figure has its status, why a verdict, the six questions."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from energy.catalogue import reader
+from energy.catalogue.records import SOURCE_STATUS, System
+from energy.compare import BIASED, CONCORDANT, DISCORDANT, INCONCLUSIVE, NOT_COMPUTED, SINGLE_ROUTE, VERDICTS
+from energy.display import basis_factor, quantity_values, scale_of
+from energy.evaluate import (
+    METHOD,
+    MISSING,
+    NO_FACTOR,
+    OUTSIDE,
+    STATUS,
+    BySystem,
+    assumes_nitrogen_factor,
+    is_listed,
+    plan,
+)
+from energy.explain import Facts, component_amounts, parts_by_component, rank
+from energy.quantities import dictionary
+from energy.resolve import Resolver, Signature, signatures
+from energy.samples import BASIS_CODE, Samples
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from energy.assessment import Assessment
+
+STAGE_WORDS = {
+    "GE": "gross energy", "DE": "digestible energy", "ME": "metabolizable energy", "NE": "net energy",
+    "label": "label energy (not a metabolizable energy)",
+}  # fmt: skip
+
+
+def quantity_title(name: str) -> str:
+    """What people call a quantity."""
+    known = dictionary().get(name)
+    return known.title if known else name.replace("_", " ")
+
+
+# ---- a figure -------------------------------------------------------------------------------------------------
+
+
+def figure_reasons(a: Assessment, i: int) -> np.ndarray:
+    """(n,) text per figure of system i: what was assumed, what is missing, what lies outside; '' if nothing."""
+    system = a.choice.systems[i]
+    found = np.full(len(a.samples), "", dtype=object)
+    wanted = tuple(BySystem(s) for s in a.choice.systems)
+    columns = frozenset(a.samples.columns)
+    for signature, rows in signatures(a.samples):
+        here = np.arange(len(a.samples)) if rows is None else rows
+        made = plan(signature, columns, wanted, a.blocks.pairs)
+        status = made.status[i]
+        resolver = Resolver(signature, columns)
+        if not made.computed[i]:
+            found[here] = _missing_words(a.samples, resolver, system)
+            continue
+        fixed = _fixed_words(resolver, system)
+        notes: list[tuple[np.ndarray, str]] = []
+        for column in status.required:
+            empty = np.isnan(a.samples.columns[column][here])
+            bad = a.samples.voided.get(column, np.zeros(len(a.samples), dtype=bool))[here]
+            notes.append((bad, f"{quantity_title(column)}: the value given could not be used"))
+            notes.append((empty & ~bad, f"needs {quantity_title(column)}: not given"))
+        for column in (c for c in status.optional if is_listed(system, c)):
+            gone = np.isnan(a.samples.columns[column][here])
+            notes.append((gone, _zero_words(system, column)))
+        code = a.blocks.status[i, here]
+        notes.append((code == NO_FACTOR, "the food group has no factor for a component that is present"))
+        notes.append((code == METHOD, f"needs another method: {_methods(system)}"))
+        notes.append((code == OUTSIDE, f"outside its domain: {_domain(system)}"))
+        found[here] = _join(fixed, notes, len(here))
+    return found
+
+
+def _join(fixed: list[str], notes: list[tuple[np.ndarray, str]], n: int) -> np.ndarray:
+    """Texts per row, made once per combination of notes that occurs."""
+    live = [(mask, text) for mask, text in notes if text and mask.any()]
+    code = np.zeros(n, dtype=np.int64)
+    for k, (mask, _) in enumerate(live[:60]):
+        code |= mask.astype(np.int64) << k
+    unique, inverse = np.unique(code, return_inverse=True)
+    texts = [
+        "; ".join(dict.fromkeys([*[t for k, (_, t) in enumerate(live[:60]) if c >> k & 1], *fixed])) for c in unique
+    ]
+    return np.array(texts, dtype=object)[inverse]
+
+
+def _fixed_words(resolver: Resolver, system: System) -> list[str]:
+    words = []
+    for symbol in system.symbols.values():
+        if symbol.quantity and symbol.absent == "zero_and_listed":
+            node = resolver.quantity(symbol.quantity, system.nitrogen_factor, filled=True)
+            if isinstance(node, float):
+                words.append(_zero_words(system, symbol.quantity))
+    if assumes_nitrogen_factor(resolver, system):
+        words.append("nitrogen factor 6.25 assumed for the protein given")
+    if system.twin == "none" and system.energy_family == "cal" and system.route == "composition":
+        words.append("the source prints no kJ factor: kJ = kcal x 4.184")
+    if system.twin.startswith("conversion"):
+        words.append(f"second unit by conversion, 1 kcal = {system.twin.removeprefix('conversion_')} kJ")
+    return words
+
+
+def _zero_words(system: System, quantity: str) -> str:
+    for symbol in system.symbols.values():
+        if symbol.quantity == quantity:
+            if symbol.absent == "zero":
+                return ""
+            then = f", then counted {symbol.absent_then}" if symbol.absent_then else ""
+            return f"{quantity_title(quantity)} not given: taken as 0{then}"
+    if quantity == "nitrogen_factor":
+        return "nitrogen factor not given: 6.25 assumed"
+    for rules in reader.derived_rules().values():
+        for rule in rules:
+            if rule.optional.get(quantity):
+                return f"{quantity_title(quantity)} not given: taken as 0, then counted {rule.optional[quantity]}"
+    return ""
+
+
+def _missing_words(samples: Samples, resolver: Resolver, system: System) -> str:
+    if system.by_group and resolver.signature.group == 0:
+        return "needs a food group of the table; none, or an unknown one, is given"
+    lacking = [
+        quantity_title(s.quantity)
+        for s in system.symbols.values()
+        if s.quantity and s.absent == "missing_input" and resolver.symbol(s, system) is None
+    ]
+    if not lacking:
+        return "cannot be computed from what is given"
+    return f"needs {', '.join(dict.fromkeys(lacking))}: not given, nor derivable on this basis"
+
+
+def _methods(system: System) -> str:
+    return "; ".join(f"{c.replace('_', ' ')} {' or '.join(m)}" for c, m in system.requires_methods.items())
+
+
+def _domain(system: System) -> str:
+    return "; ".join(
+        f"{b.symbol} {'' if b.low is None else f'from {b.low:g} '}{'' if b.high is None else f'to {b.high:g}'}".strip()
+        for b in system.domain
+    )
+
+
+# ---- a comparison ---------------------------------------------------------------------------------------------
+
+
+def pair_rows(a: Assessment, p: int) -> np.ndarray:
+    """Rows a comparison speaks for: each sample is compared by the first bomb system that serves it."""
+    pairs, b = a.blocks.pairs, a.blocks
+    alike = [q for q, x in enumerate(pairs) if (x.stage, x.composition) == (pairs[p].stage, pairs[p].composition)]
+    free = np.ones(len(a.samples), dtype=bool)
+    for q in alike:
+        serves = b.status[b.row(pairs[q].bomb)] < MISSING
+        takes = free if q == alike[-1] else free & serves
+        if q == p:
+            return np.flatnonzero(takes)
+        free = free & ~serves
+    return np.flatnonzero(free)
+
+
+def pair_reasons(a: Assessment, p: int, rows: np.ndarray) -> np.ndarray:
+    """One sentence per verdict."""
+    b, pair = a.blocks, a.blocks.pairs[p]
+    u = np.hypot(b.u_measurement[p], b.u_model[p])
+    with np.errstate(all="ignore"):
+        share = 100 * b.measurement[p] / b.at_heats[p]
+        interval = 100 * a.coverage * u / b.at_heats[p]
+        limit = 100 * a.width[p] / b.at_heats[p]
+    texts = np.full(len(rows), "", dtype=object)
+    lacking: dict[str, np.ndarray] = {}
+    for k, i in enumerate(rows):
+        code = a.verdict[p, i]
+        if code in (SINGLE_ROUTE, NOT_COMPUTED):
+            ends = [pair.bomb, pair.composition]
+            gone = [x for x in ends if b.status[b.row(x), i] >= MISSING]
+            for x in gone:
+                if x not in lacking:
+                    lacking[x] = figure_reasons(a, b.row(x))
+            texts[k] = "; ".join(f"{x}: {lacking[x][i]}" for x in gone)
+            continue
+        figures = f"measurement part {share[i]:+.1f} % +/- {interval[i]:.1f} %, limit +/- {limit[i]:.1f} %"
+        words = {
+            CONCORDANT: "the interval lies inside the limits and holds zero",
+            BIASED: "inside the limits, but zero is outside the interval",
+            DISCORDANT: "the interval lies outside the limits altogether",
+            INCONCLUSIVE: "the interval straddles a limit: the measurements do not decide"
+            if np.isfinite(u[i]) else "no uncertainty is known",
+        }  # fmt: skip
+        texts[k] = f"{words[code]} ({figures})"
+    return texts
+
+
+def causes(a: Assessment) -> tuple[np.ndarray, np.ndarray]:
+    """Probable cause and next measurement per sample, from the GE comparison."""
+    b = a.blocks
+    code = a.verdict[0]
+    look = a.choice.limit.look_width(b.at_heats[0])
+    with np.errstate(invalid="ignore"):
+        open_rows = (code == DISCORDANT) | (np.isin(code, (BIASED, INCONCLUSIVE)) & (np.abs(b.measurement[0]) > look))
+    if not open_rows.any():
+        empty = np.full(len(a.samples), "", dtype=object)
+        return empty, empty.copy()
+    n = len(a.samples)
+    no = np.zeros(n, dtype=bool)
+    s = a.samples
+    dry = quantity_values(s, "dry_matter")
+    fibre = np.nan_to_num(quantity_values(s, "total_dietary_fibre"))
+    given = ~np.isnan(s.columns["available_carbohydrate"]) if "available_carbohydrate" in s.columns else no
+    method = s.text.get("fat_method")
+    basis = s.basis.get("gross_energy")
+    facts = Facts(
+        measured=b.value[b.row(b.pairs[0].bomb)],
+        computed=b.value[b.row(b.pairs[0].composition)],
+        u=np.hypot(b.u_measurement[0], b.u_model[0]),
+        limit=a.width[0],
+        dry_matter=dry,
+        fibre=fibre,
+        mass_sum=mass_sum(s),
+        available_given=given,
+        ether_extract=no if method is None else np.array([m == "ether_extract" for m in method]),
+        on_dry_matter=no if basis is None else basis == BASIS_CODE["dry_matter"],
+    )
+    return rank(facts, open_rows)
+
+
+def mass_sum(samples: Samples) -> np.ndarray:
+    """(n,) sum of the components on the working basis, 1 when all is there; NaN unless carbohydrate was determined."""
+    if "available_carbohydrate" not in samples.columns:
+        return np.full(len(samples), np.nan)
+    total = 1 - quantity_values(samples, "solids") + quantity_values(samples, "crude_protein")
+    for name in ("crude_fat", "ash", "available_carbohydrate"):
+        total = total + quantity_values(samples, name)
+    for name in ("total_dietary_fibre", "organic_acids", "alcohol"):
+        total = total + np.nan_to_num(quantity_values(samples, name))
+    measured = ~np.isnan(samples.columns["available_carbohydrate"])
+    return np.where(measured, total, np.nan)
+
+
+# ---- one sample -----------------------------------------------------------------------------------------------
+
+
+def main_pair(a: Assessment, row: int) -> int | None:
+    """The comparison a sample's screen opens with: the first beyond GE that serves it, else GE."""
+    for p in [*range(1, len(a.blocks.pairs)), 0]:
+        if row in pair_rows(a, p) and a.verdict[p, row] not in (SINGLE_ROUTE, NOT_COMPUTED):
+            return p
+    return None
+
+
+def _factor(a: Assessment, row: int) -> float:
+    factor = basis_factor(a.samples, a.blocks.basis, a.shown.basis)
+    return float(factor if isinstance(factor, float) else factor[row])
+
+
+def explain(a: Assessment, sample_id: str) -> pd.DataFrame:
+    """The parts of the main comparison line by line, in the unit shown; lines of a part add up to the part."""
+    import pandas as pd
+
+    columns = ["part", "component", "amount", "unit", "bomb", "composition", "contribution", "words"]
+    row = a.index(sample_id)
+    p = main_pair(a, row)
+    if p is None:
+        return pd.DataFrame(columns=columns)
+    b, pair = a.blocks, a.blocks.pairs[p]
+    k = scale_of(a.catalogue[pair.bomb], a.shown) * _factor(a, row)
+    measured, at_heats = b.at_heats[p, row] + b.measurement[p, row], b.at_heats[p, row]
+    lines: list[dict[str, Any]] = [
+        {"part": "measurement", "component": "gross energy, measured against computed", "amount": np.nan,
+         "bomb": measured, "composition": at_heats, "contribution": b.measurement[p, row],
+         "words": "what the bomb system makes of the measured GE, and of the GE computed from the components' heats"}
+    ]  # fmt: skip
+    values = {name: quantity_values(a.samples, name)[row] for name in (
+        "crude_protein", "crude_fat", "carbohydrate_all", "alcohol", "total_dietary_fibre", "polyols",
+        "organic_acids", "sugars", "starch")}  # fmt: skip
+    amounts = component_amounts(values, _own_factor(a.samples, row))
+    for line in parts_by_component(a.samples, row, pair, a.catalogue, amounts):
+        if line["component"] == "protein":
+            line["amount"] *= amounts["own_factor"]
+        what = "general heats against the best heats for it" if line["part"] == "heats" else _convention_words(line)
+        lines.append({**line, "words": what})
+    for part in ("heats", "convention"):
+        rest = getattr(b, part)[p, row] - sum(x["contribution"] for x in lines if x["part"] == part)
+        if abs(rest) > 1e-9:
+            lines.append({"part": part, "component": "columns that do not agree", "amount": np.nan, "bomb": np.nan,
+                          "composition": np.nan, "contribution": rest,
+                          "words": "the table gives carbohydrate in two ways that differ"})  # fmt: skip
+    frame = pd.DataFrame(lines)
+    for name in ("bomb", "composition", "contribution"):
+        frame[name] = frame[name] * k
+    frame["amount"] = 100 * frame["amount"] * _factor(a, row)
+    frame["unit"] = a.shown.unit
+    return frame[columns]
+
+
+def _convention_words(line: dict[str, Any]) -> str:
+    per_bomb, per_other = line["bomb"] / line["amount"], line["composition"] / line["amount"]
+    return f"{per_bomb:.1f} kJ/g by the bomb system, {per_other:.1f} kJ/g by the composition system"
+
+
+def _own_factor(samples: Samples, row: int) -> float:
+    groups = reader.food_groups()
+    if "food_group" in samples.text:
+        found = groups.get(str(samples.text["food_group"][row]), {}).get("nitrogen_factor")
+        if found:
+            return float(found)
+    if "nitrogen_factor" in samples.columns and not np.isnan(samples.columns["nitrogen_factor"][row]):
+        return float(samples.columns["nitrogen_factor"][row])
+    return 6.25
+
+
+def partition(a: Assessment, sample_id: str) -> pd.DataFrame:
+    """GE -> losses -> ME of both routes, one line each, in the unit shown."""
+    import pandas as pd
+
+    row, b = a.index(sample_id), a.blocks
+    p = main_pair(a, row)
+    pairs = [q for q in range(len(b.pairs)) if row in pair_rows(a, q)]
+    pair = b.pairs[p if p is not None else pairs[-1]]
+    if p == 0 and len(pairs) > 1:
+        pair = b.pairs[pairs[1]]
+    lines = []
+    for route, start, end in (
+        ("bomb", b.pairs[0].bomb, pair.bomb),
+        ("composition", b.pairs[0].heats, pair.composition),
+    ):
+        top, bottom = (_figure(a, x, row) for x in (start, end))
+        lines.append(_line(a, route, "gross energy", start, row, top))
+        if end in (start, b.pairs[0].heats):
+            continue
+        loss = {"value": top["value"] - bottom["value"], "u": np.nan}
+        stage = a.catalogue[end].stage
+        words = "urine only: no faecal loss is taken off" if stage == "label" else "not digested, and lost in urine"
+        lines.append({**_line(a, route, "not used by the eater", end, row, loss), "stage": "loss", "words": words})
+        lines.append(_line(a, route, STAGE_WORDS[stage], end, row, bottom))
+    frame = pd.DataFrame(lines)
+    for line_system in frame["system"].unique():
+        mask = frame["system"] == line_system
+        frame.loc[mask, ["value", "u"]] *= scale_of(a.catalogue[str(line_system)], a.shown) * _factor(a, row)
+    return frame
+
+
+def _figure(a: Assessment, system: str, row: int) -> dict[str, float]:
+    i = a.blocks.row(system)
+    return {"value": float(a.blocks.value[i, row]), "u": float(a.blocks.u[i, row])}
+
+
+def _line(a: Assessment, route: str, step: str, system: str, row: int, figure: dict[str, float]) -> dict[str, Any]:
+    s = a.catalogue[system]
+    why = "" if np.isfinite(figure["value"]) else str(figure_reasons(a, a.blocks.row(system))[row])
+    return {
+        "route": route, "step": step, "stage": s.stage, "system": s.id, **figure, "unit": a.shown.unit,
+        "words": why or s.title, "source": s.citation, "locator": s.locator,
+        "source_status": SOURCE_STATUS[s.source_status],
+    }  # fmt: skip
+
+
+def notes(a: Assessment, sample_id: str) -> list[str]:
+    """Warnings that are no causes: food matrix, missing route, what was assumed."""
+    row, found = a.index(sample_id), []
+    found += matrix_notes(a.samples, row)
+    for s in a.choice.systems:
+        if a.leading[a.blocks.row(s.id), row]:
+            text = figure_reasons(a, a.blocks.row(s.id))[row]
+            if text:
+                found.append(f"{s.id}: {text}")
+    found += [str(p) for p in a.samples.problems if p.sample_id == sample_id]
+    return found
+
+
+def matrix_notes(samples: Samples, row: int) -> list[str]:
+    """'Both routes overstate ME' where food structure is known to hide energy from the eater."""
+    group = str(samples.text["food_group"][row]) if "food_group" in samples.text else ""
+    form = str(samples.text["form"][row]) if "form" in samples.text else ""
+    return [
+        f"both routes overstate ME: {entry['words']} ({entry['source']})"
+        for entry in reader.food_matrix()
+        if group in entry["food_groups"] and form in entry["forms"]
+    ]
+
+
+def questions(a: Assessment, sample_id: str) -> list[tuple[str, str]]:
+    """The six questions of a sample, each with its answer."""
+    row, b = a.index(sample_id), a.blocks
+    p = main_pair(a, row)
+    cause, following = a.causes
+    unit = a.shown.unit
+    measured = b.row(b.pairs[0].bomb)
+    ge = VERDICTS[a.verdict[0, row]]
+    material = pair_reasons(a, 0, np.array([row]))[0]
+    leads = [
+        f"{STAGE_WORDS[s.stage]}: {_say(a, b.row(s.id), row)} by {s.id}"
+        for s in a.choice.systems
+        if a.leading[b.row(s.id), row]
+    ]
+    if p is None:
+        routes = "one route only: nothing to compare"
+    else:
+        k = 1 / a.shown.scale * _factor(a, row)
+        parts = [getattr(b, x)[p, row] * k for x in ("difference", "measurement", "heats", "convention")]
+        routes = (
+            f"{VERDICTS[a.verdict[p, row]]}: bomb less composition {parts[0]:+.2f} {unit} = measurement {parts[1]:+.2f} "
+            f"+ heats {parts[2]:+.2f} + convention {parts[3]:+.2f} ({b.pairs[p].bomb} against {b.pairs[p].composition})"
+        )
+    probable = f"{cause[row]}. Next: {following[row]}" if cause[row] else "no cause is named: nothing needs one"
+    return [
+        ("What does the bomb say?", _say(a, measured, row)),
+        ("Do bomb and composition describe the same material?", f"{ge}: {material}"),
+        ("What does the eater get, and which figure leads?", "; ".join(leads) or "nothing can be computed"),
+        ("Do the routes agree?", routes),
+        ("If not, what is the probable cause, and what should be measured next?", probable),
+        ("May the declared value stand?", _declared_words(a, row)),
+    ]
+
+
+def _say(a: Assessment, i: int, row: int) -> str:
+    if not np.isfinite(a.blocks.value[i, row]):
+        return f"nothing: {figure_reasons(a, i)[row]}"
+    k = scale_of(a.choice.systems[i], a.shown) * _factor(a, row)
+    basis = a.shown.basis.replace("_", " ")
+    return f"{a.blocks.value[i, row] * k:.4g} {a.shown.unit} {basis} (u {a.blocks.u[i, row] * k:.2g})"
+
+
+def _declared_words(a: Assessment, row: int) -> str:
+    declared = a.samples.columns.get("declared_energy")
+    if declared is None or np.isnan(declared[row]):
+        return "none is declared"
+    return (
+        f"declared {declared[row] / a.shown.scale:.4g} {a.shown.unit} as is; the law's tolerance is not judged here yet"
+    )
+
+
+__all__ = ["STATUS", "Signature", "causes", "explain", "figure_reasons", "notes", "pair_rows", "partition", "questions"]

@@ -1,0 +1,255 @@
+"""Tables made from the blocks of an assessment when somebody asks for them."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from energy import reasons
+from energy.catalogue.records import SOURCE_STATUS, System
+from energy.compare import VERDICTS
+from energy.display import basis_factor, scale_of, visible
+from energy.evaluate import STATUS
+from energy.problems import WrongUse
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from energy.assessment import Assessment
+
+RESULT_COLUMNS = (
+    "sample_id", "target", "stage", "route", "system", "value", "unit", "basis", "u", "leading", "status", "reason",
+    "source", "locator", "source_status",
+)  # fmt: skip
+VERDICT_COLUMNS = (
+    "sample_id", "target", "stage", "bomb_system", "composition_system", "bomb", "composition", "difference",
+    "difference_percent", "measurement_part", "heats_part", "convention_part", "u_difference", "limit_lower",
+    "limit_upper", "coverage", "verdict", "reason", "probable_cause", "next_measurement", "unit", "basis",
+    "food_name", "u_measurement_part",
+)  # fmt: skip
+DECLARED_COLUMNS = (
+    "sample_id", "law", "declared_kj", "declared_kcal", "computed_kj", "computed_kcal", "rounded_kj", "rounded_kcal",
+    "lower", "upper", "probability_within", "verdict", "locator",
+)  # fmt: skip
+BALANCE_COLUMNS = ("sample_id", "mass_sum", "heat_from_components", "residual_energy", "chi_square", "p_value")
+EQUATION_COLUMNS = (
+    "id", "title", "target", "stage", "route", "body", "law", "formula", "latex", "result", "nitrogen_factor", "twin",
+    "domain", "residual_sd", "source", "locator", "source_status", "source_words", "note", "file",
+)  # fmt: skip
+
+
+def results(
+    a: Assessment,
+    target: str | None = None,
+    stage: str | None = None,
+    system: str | None = None,
+    sample_id: str | None = None,
+) -> pd.DataFrame:
+    """The tidy table; narrowed before it is made."""
+    import pandas as pd
+
+    rows = slice(None) if sample_id is None else slice(a.index(sample_id), a.index(sample_id) + 1)
+    ids = a.samples.ids[rows]
+    factor = basis_factor(a.samples, a.blocks.basis, a.shown.basis)
+    factor = factor if isinstance(factor, float) else factor[rows]
+    pieces: dict[str, list[Any]] = {name: [] for name in RESULT_COLUMNS}
+    count = 0
+    for i, s in enumerate(a.choice.systems):
+        if stage not in (None, s.stage) or system not in (None, s.id) or target not in (None, a.target):
+            continue
+        if not visible(s, a.shown):
+            continue
+        count += 1
+        k = scale_of(s, a.shown)
+        for name, values in (
+            ("value", a.blocks.value[i, rows] * (factor * k)),
+            ("u", a.blocks.u[i, rows] * (factor * k)),
+            ("leading", leading_shown(a, i)[rows]),
+            ("status", np.array(STATUS, dtype=object)[a.blocks.status[i, rows]]),
+            ("reason", reasons.figure_reasons(a, i)[rows]),
+        ):
+            pieces[name].append(values)
+        for name, text in (
+            ("stage", s.stage), ("route", s.route), ("system", s.id), ("source", s.citation), ("locator", s.locator),
+            ("source_status", s.source_status),
+        ):  # fmt: skip
+            pieces[name].append(text)
+    table: dict[str, Any] = {}
+    n = len(ids)
+    for name in RESULT_COLUMNS:
+        if name == "sample_id":
+            table[name] = np.tile(ids, count)
+        elif name in ("target", "unit", "basis"):
+            table[name] = {"target": a.target, "unit": a.shown.unit, "basis": a.shown.basis}[name]
+        elif name in ("stage", "route", "system", "source", "locator", "source_status"):
+            kinds = list(dict.fromkeys(pieces[name]))
+            codes = np.repeat([kinds.index(x) for x in pieces[name]], n)
+            table[name] = pd.Categorical(np.array(kinds, dtype=object)[codes], categories=kinds)
+        else:
+            table[name] = np.concatenate(pieces[name]) if pieces[name] else np.empty(0)
+    frame = pd.DataFrame(table, columns=list(RESULT_COLUMNS), index=range(n * count))
+    if n * count:
+        order = np.arange(n * count).reshape(count, n).T.ravel()
+        frame = frame.iloc[order].reset_index(drop=True)
+    return frame
+
+
+def leading_shown(a: Assessment, i: int) -> np.ndarray:
+    """(n,) bool: does system i lead, when a twin stands in for a leading system that is not shown?"""
+    s = a.choice.systems[i]
+    if s.twin_of is not None and s.twin_of in a.blocks.systems and a.shown.family == s.energy_family:
+        return np.asarray(a.leading[a.blocks.row(s.twin_of)])
+    return np.asarray(a.leading[i])
+
+
+def verdicts(a: Assessment) -> pd.DataFrame:
+    """One row per sample and comparison, sample by sample; rows no system serves are left out if others do."""
+    import pandas as pd
+
+    factor = basis_factor(a.samples, a.blocks.basis, a.shown.basis)
+    frames = []
+    for p in range(len(a.blocks.pairs)):
+        rows = reasons.pair_rows(a, p)
+        if not len(rows):
+            continue
+        frames.append(
+            _pair_table(a, p, rows, factor if isinstance(factor, float) else factor[rows]).assign(_p=p, _i=rows)
+        )
+    if not frames:
+        return pd.DataFrame(columns=list(VERDICT_COLUMNS))
+    table = pd.concat(frames, ignore_index=True).sort_values(["_i", "_p"], kind="stable", ignore_index=True)
+    return table[list(VERDICT_COLUMNS)]
+
+
+def _pair_table(a: Assessment, p: int, rows: np.ndarray, factor: np.ndarray | float) -> pd.DataFrame:
+    import pandas as pd
+
+    b, pair = a.blocks, a.blocks.pairs[p]
+    bomb, composition = a.catalogue[pair.bomb], a.catalogue[pair.composition]
+    shown_composition = composition
+    value = b.value[b.row(pair.composition), rows]
+    difference, convention = b.difference[p, rows], b.convention[p, rows]
+    if composition.twin_id in b.systems and not visible(composition, a.shown):
+        # the twin's own sum stands on the label in this unit; the change belongs to the convention
+        shown_composition = a.catalogue[str(composition.twin_id)]
+        other = b.value[b.row(shown_composition.id), rows]
+        difference, convention = difference - (other - value), convention - (other - value)
+        value = other
+    k = scale_of(bomb, a.shown) * factor
+    law = scale_of(shown_composition, a.shown) * factor
+    shown_value = value * law
+    # a law's own kilocalorie moves the composition figure by 0.1 %: that too is convention
+    shift = shown_value - value * k
+    codes = a.verdict[p, rows]
+    cause, following = a.causes
+    talk = reasons.pair_reasons(a, p, rows)
+    n = len(rows)
+    return pd.DataFrame(
+        {
+            "sample_id": a.samples.ids[rows],
+            "target": a.target,
+            "stage": pair.stage,
+            "bomb_system": pair.bomb,
+            "composition_system": shown_composition.id,
+            "bomb": b.value[b.row(pair.bomb), rows] * k,
+            "composition": shown_value,
+            "difference": difference * k - shift,
+            "difference_percent": 100 * (difference * k - shift) / shown_value,
+            "measurement_part": b.measurement[p, rows] * k,
+            "heats_part": b.heats[p, rows] * k,
+            "convention_part": convention * k - shift,
+            "u_difference": b.u_difference[p, rows] * k,
+            "limit_lower": -a.width[p, rows] * k,
+            "limit_upper": a.width[p, rows] * k,
+            "coverage": a.coverage,
+            "verdict": np.array(VERDICTS, dtype=object)[codes],
+            "reason": talk,
+            "probable_cause": cause[rows],
+            "next_measurement": following[rows],
+            "unit": a.shown.unit,
+            "basis": a.shown.basis,
+            "food_name": a.samples.text.get("name", np.full(len(a.samples), "", dtype=object))[rows],
+            "u_measurement_part": np.hypot(b.u_measurement[p, rows], b.u_model[p, rows]) * k,
+        },
+        index=range(n),
+    )
+
+
+def declared(a: Assessment) -> pd.DataFrame:
+    """Columns of the design; rows come with the label module."""
+    import pandas as pd
+
+    return pd.DataFrame(columns=list(DECLARED_COLUMNS))
+
+
+def balances(a: Assessment) -> pd.DataFrame:
+    """Mass sum and energy residual per sample (fractions, MJ/kg on the working basis)."""
+    import pandas as pd
+
+    i = a.blocks.row(a.blocks.pairs[0].heats)
+    return pd.DataFrame(
+        {
+            "sample_id": a.samples.ids,
+            "mass_sum": reasons.mass_sum(a.samples),
+            "heat_from_components": a.blocks.value[i],
+            "residual_energy": a.blocks.measurement[0],
+            "chi_square": np.nan,
+            "p_value": np.nan,
+        }
+    )
+
+
+def sources(a: Assessment) -> pd.DataFrame:
+    """Publications behind the figures, once each."""
+    import pandas as pd
+
+    rows = [
+        {"system": s.id, "title": s.title, "formula": s.formula.text, "unit": s.result_unit, "source": s.citation,
+         "locator": s.locator, "source_status": s.source_status, "words": SOURCE_STATUS[s.source_status],
+         "note": s.note}
+        for s in a.choice.systems
+    ]  # fmt: skip
+    return pd.DataFrame(rows)
+
+
+def wide(a: Assessment, quantity: str) -> pd.DataFrame:
+    """samples x systems, a view of the block."""
+    import pandas as pd
+
+    if quantity not in ("value", "u", "status"):
+        raise WrongUse(f"'{quantity}' is not a block.", "Use value, u or status.")
+    block = getattr(a.blocks, quantity)
+    index = pd.Index(a.samples.ids, name="sample_id")
+    return pd.DataFrame(block.T, index=index, columns=list(a.blocks.systems), copy=False)
+
+
+def equation_row(s: System) -> dict[str, Any]:
+    """One line of the catalogue's table."""
+    domain = "; ".join(
+        f"{b.symbol} {'' if b.low is None else f'from {b.low:g} '}{'' if b.high is None else f'to {b.high:g} '}"
+        f"{s.symbols[b.symbol].unit if b.symbol in s.symbols else s.result_unit}"
+        for b in s.domain
+    )
+    return {
+        "id": s.id,
+        "title": s.title,
+        "target": ", ".join(s.targets),
+        "stage": s.stage,
+        "route": s.route,
+        "body": s.body,
+        "law": s.law,
+        "formula": s.formula.text,
+        "latex": s.formula.latex,
+        "result": s.result_unit,
+        "nitrogen_factor": str(s.nitrogen_factor),
+        "twin": s.twin,
+        "domain": "; ".join(x for x in (domain, s.domain_words) if x),
+        "residual_sd": s.residual_sd,
+        "source": s.citation,
+        "locator": s.locator,
+        "source_status": s.source_status,
+        "source_words": SOURCE_STATUS[s.source_status],
+        "note": s.note,
+        "file": s.file,
+    }
