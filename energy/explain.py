@@ -245,7 +245,7 @@ HYPOTHESES = (
                lambda f: 100 * f.fibre,
                "the available carbohydrate seems to hold the fibre already: {amount:.1f} g per 100 g are counted twice",
                "look whether 'carbohydrate' on the certificate is with or without fibre"),
-    Hypothesis("ether_extract", 0.6, _same_measured, _same_measured,
+    Hypothesis("ether_extract", 0.95, _same_measured, _same_measured,
                lambda f: f.ether_extract & (_missing_fat(f) > 0.005) & (_missing_fat(f) < 0.12),
                lambda f: 100 * _missing_fat(f),
                "fat was extracted without acid hydrolysis: {amount:.1f} g of bound fat per 100 g, "
