@@ -348,7 +348,7 @@ def demo_paths() -> list[Path]:
     """The invented demo tables, from an installed wheel or a checkout."""
     here = Path(__file__).parent
     for folder in (here / "demo_data", here.parent / "demo_data"):
-        found = sorted(folder.glob("*.csv"))
+        found = sorted(folder.glob("*.csv"), reverse=True)
         if found:
             return found
     raise WrongUse("The demo tables are not there.", "Install the package again.")

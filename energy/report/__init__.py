@@ -1,0 +1,1 @@
+"""Evidence that can be recomputed: tables, a document, a board for the terminal."""
