@@ -132,7 +132,8 @@ def choose(
     pairs += [Pair(catalogue[c].stage, b, c, heats) for c in (*against, *beside) for b in bombs
               if catalogue[c].route == "composition"]  # fmt: skip
     ids = [MEASURED, heats, *bombs, *_with_twins(catalogue, against), *beside]
-    ids += [x for x in default.get("also", ()) if x in catalogue]
+    if law in catalogue:  # a law that lets a bomb value stand shows that value too
+        ids += [s.id for s in catalogue.values() if s.law and s.route == "bomb" and s.body == catalogue[law].body]
     if which == "all":
         ids += [s.id for s in catalogue.values() if target in s.targets]
     chosen = tuple(catalogue[i] for i in dict.fromkeys(ids))

@@ -112,14 +112,14 @@ def _zero_words(system: System, quantity: str) -> str:
         if symbol.quantity == quantity:
             if symbol.absent == "zero":
                 return ""
-            then = f", then counted {symbol.absent_then}" if symbol.absent_then else ""
+            then = f" (any there is counts {symbol.absent_then})" if symbol.absent_then else ""
             return f"{quantity_title(quantity)} not given: taken as 0{then}"
     if quantity == "nitrogen_factor":
         return "nitrogen factor not given: 6.25 assumed"
     for rules in reader.derived_rules().values():
         for rule in rules:
             if rule.optional.get(quantity):
-                return f"{quantity_title(quantity)} not given: taken as 0, then counted {rule.optional[quantity]}"
+                return f"{quantity_title(quantity)} not given: taken as 0 (any there is counts {rule.optional[quantity]})"
     return ""
 
 

@@ -1,0 +1,1 @@
+"""One file per screen: widgets and layout; every number comes from an assessment."""
