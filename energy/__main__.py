@@ -23,7 +23,9 @@ DEMO_FOLDER = "energy-demo"
 
 def parser() -> argparse.ArgumentParser:
     """The command line's grammar."""
-    top = argparse.ArgumentParser(prog="python -m energy", description="Bomb and composition: two routes to one energy.")
+    top = argparse.ArgumentParser(
+        prog="python -m energy", description="Bomb and composition: two routes to one energy."
+    )
     commands = top.add_subparsers(dest="command", required=True, metavar="COMMAND")
     assess = commands.add_parser("assess", help="assess a table of samples")
     assess.add_argument("file", help="CSV, XLSX or Parquet; wide or long")
@@ -84,7 +86,9 @@ def _run(options: argparse.Namespace) -> Assessment:
     from energy.assessment import assess
     from energy.intake import read_samples
 
-    samples = read_samples(options.file, units=options.units, basis=options.basis, target=options.target, decimal=options.decimal)
+    samples = read_samples(
+        options.file, units=options.units, basis=options.basis, target=options.target, decimal=options.decimal
+    )
     return assess(
         samples,
         bomb_system=options.bomb_system,

@@ -48,14 +48,16 @@ def numbers(texts: np.ndarray, comma: bool) -> Column:
 
     cleaned = texts
     if comma:
-        cleaned = np.array([t.replace(",", ".") if t.count(",") == 1 and "." not in t else t for t in texts], dtype=object)
+        cleaned = np.array(
+            [t.replace(",", ".") if t.count(",") == 1 and "." not in t else t for t in texts], dtype=object
+        )
     parsed = pd.to_numeric(pd.Series(cleaned, dtype=object).replace("", np.nan), errors="coerce").to_numpy(dtype=float)
     empty = texts == ""
     value = np.where(np.isfinite(parsed), parsed, np.nan)
     censored = np.zeros(len(texts), dtype=bool)
     u = np.full(len(texts), np.nan)
     bad: dict[int, tuple[str, str]] = {}
-    for i in np.flatnonzero(np.isnan(value) & ~empty):
+    for i in np.flatnonzero(np.isnan(value) & ~empty).tolist():
         text = str(cleaned[i]).replace("\u2212", "-").replace("\u00a0", "").replace("\u2009", "").strip()
         if NUMBER.fullmatch(text) and np.isfinite(float(text)):
             value[i] = float(text)

@@ -125,9 +125,17 @@ def _unknown(header: str, plain: str, unit_text: str | None, where: str) -> Mean
     if plain in _AMBIGUOUS_WORDS:
         word = _AMBIGUOUS_WORDS[plain]
         cure = f"Say which is meant: {AMBIGUOUS[word]}."
-        return Meaning(header, "quantity", problem=_problem(header, where, f"'{header}' can mean several things.", cure, "name"))
+        return Meaning(
+            header, "quantity", problem=_problem(header, where, f"'{header}' can mean several things.", cure, "name")
+        )
     if unit_text is None:
         return Meaning(header, "unused")
     near = difflib.get_close_matches(plain, synonym_index(), n=3, cutoff=0.6)
-    cure = f"Did you mean {', '.join(repr(n) for n in near)}?" if near else "See the names in the README, or drop its unit to keep it as a note."
-    return Meaning(header, "quantity", problem=_problem(header, where, "this name is not in the dictionary.", cure, "name"))
+    cure = (
+        f"Did you mean {', '.join(repr(n) for n in near)}?"
+        if near
+        else "See the names in the README, or drop its unit to keep it as a note."
+    )
+    return Meaning(
+        header, "quantity", problem=_problem(header, where, "this name is not in the dictionary.", cure, "name")
+    )

@@ -82,7 +82,9 @@ def _units(units: Mapping[str, str] | str | Path | None) -> dict[str, str]:
     try:
         found = tomllib.loads(Path(units).read_text(encoding="utf-8"))
     except (OSError, UnicodeDecodeError, tomllib.TOMLDecodeError) as error:
-        raise WrongUse(f"The units file '{units}' cannot be read ({error}).", 'Lines like: "protein" = "g/100 g as is".') from None
+        raise WrongUse(
+            f"The units file '{units}' cannot be read ({error}).", 'Lines like: "protein" = "g/100 g as is".'
+        ) from None
     return {str(k): str(v) for k, v in found.items()}
 
 
@@ -108,10 +110,18 @@ class _Table:
         self.ids = np.array([], dtype=object)
         self.rows = np.array([], dtype=int)
 
-    def stop(self, what: str, cure: str, column: str | None = None, row: int | None = None, value: str | None = None) -> None:
-        self.stops.append(Problem(what=what, cure=cure, where=self.raw.where, column=column, row=row, value=value, severity="structural"))
+    def stop(
+        self, what: str, cure: str, column: str | None = None, row: int | None = None, value: str | None = None
+    ) -> None:
+        self.stops.append(
+            Problem(
+                what=what, cure=cure, where=self.raw.where, column=column, row=row, value=value, severity="structural"
+            )
+        )
 
-    def tell(self, what: str, cure: str, i: int | None, column: str | None, value: str | None = None, severity: str = "cell") -> None:
+    def tell(
+        self, what: str, cure: str, i: int | None, column: str | None, value: str | None = None, severity: str = "cell"
+    ) -> None:
         row = None if i is None else int(self.rows[i])
         identity = None if i is None else str(self.ids[i])
         self.problems.append(Problem(what, cure, self.raw.where, row, column, value, severity, identity))
@@ -135,7 +145,9 @@ class _Table:
         if self.stops:
             raise StructuralProblems(self.stops + self.problems)
         n = len(self.ids)
-        samples = Samples(ids=self.ids, columns={}, text=self.text, rows=self.rows, source=self.raw.where, problems=self.problems)
+        samples = Samples(
+            ids=self.ids, columns={}, text=self.text, rows=self.rows, source=self.raw.where, problems=self.problems
+        )
         for quantity, found in self.gathered.items():
             values = np.array(list(found.values.values())) if found.values else np.full((1, n), np.nan)
             mean, count = replicates.mean_of(values)
@@ -182,12 +194,14 @@ class _Table:
             scale = 100 if entry.dimension in ("mass_fraction", "fraction") else 1
             unit = {"energy": "MJ/kg", "density": "g/ml"}.get(entry.dimension, "%" if scale == 100 else "")
             with np.errstate(invalid="ignore"):
-                impossible = (values < 0) | ((values > 1.0000001) if scale == 100 and high <= 1 else np.zeros(len(values), dtype=bool))
+                impossible = (values < 0) | (
+                    (values > 1.0000001) if scale == 100 and high <= 1 else np.zeros(len(values), dtype=bool)
+                )
                 odd = ~impossible & ((values < low) | (values > high))
-            for i in np.flatnonzero(impossible):
+            for i in np.flatnonzero(impossible).tolist():
                 self.tell(f"{entry.title} of {values[i] * scale:.4g} {unit} is impossible.",
                           "Check the value, its unit and its decimal point.", i, quantity, f"{values[i] * scale:.4g}")  # fmt: skip
-            for i in np.flatnonzero(odd):
+            for i in np.flatnonzero(odd).tolist():
                 self.tell(f"{entry.title} of {values[i] * scale:.4g} {unit} is outside the plausible {low * scale:g} to {high * scale:g}.",
                           "Computed all the same; check the value and its unit.", i, quantity, f"{values[i] * scale:.4g}", "warning")  # fmt: skip
             if impossible.any():
@@ -202,7 +216,7 @@ class _Table:
         for quantity, basis in samples.basis.items():
             lacking = (basis == BASIS_CODE["as_analysed"]) & ~np.isnan(samples.columns[quantity]) & np.isnan(residual)
             title = dictionary()[quantity].title
-            for i in np.flatnonzero(lacking):
+            for i in np.flatnonzero(lacking).tolist():
                 self.tell(f"{title} is given as analysed (the powder in the crucible), but the powder's residual moisture is not.",
                           "Add residual_moisture [%], measured on the day of the pellets, or give the value on dry matter.",
                           i, quantity)  # fmt: skip
@@ -212,7 +226,7 @@ class _Table:
         if alcohol is not None and "moisture" in samples.columns:
             method = samples.text.get("moisture_method", np.full(len(self.ids), None, dtype=object))
             loses = np.array([m in ("oven", "vacuum", "freeze_drying", None, "") for m in method])
-            for i in np.flatnonzero(loses & (np.nan_to_num(alcohol) > 0.002)):
+            for i in np.flatnonzero(loses & (np.nan_to_num(alcohol) > 0.002)).tolist():
                 self.tell("moisture by drying holds the alcohol as well, and alcohol is given apart.",
                           "Use Karl Fischer water, or subtract the alcohol from the loss.", i, "moisture", None, "warning")  # fmt: skip
 
@@ -220,7 +234,14 @@ class _Table:
         if "target" in samples.text:
             for i, value in enumerate(samples.text["target"]):
                 if value and value not in TARGETS:
-                    self.tell(f"the target '{value}' is not known.", f"One of: {', '.join(TARGETS)}.", i, "target", str(value), "warning")
+                    self.tell(
+                        f"the target '{value}' is not known.",
+                        f"One of: {', '.join(TARGETS)}.",
+                        i,
+                        "target",
+                        str(value),
+                        "warning",
+                    )
         for column, quantity in method_columns().items():
             if column not in samples.text:
                 continue
@@ -237,8 +258,10 @@ class _Table:
             return values * unit.scale, np.zeros(len(values), dtype=bool)
         density = self.gathered["density"].values[1] if "density" in self.gathered else np.full(len(values), np.nan)
         lacking = ~np.isnan(values) & np.isnan(density)
-        for i in np.flatnonzero(lacking):
-            self.tell(f"the unit '{unit.text}' is per volume and no density is given.", "Add density [g/ml].", i, column)
+        for i in np.flatnonzero(lacking).tolist():
+            self.tell(
+                f"the unit '{unit.text}' is per volume and no density is given.", "Add density [g/ml].", i, column
+            )
         return values * unit.scale / density, lacking
 
 
@@ -292,7 +315,9 @@ class _Wide(_Table):
             meanings[k] = replace(m, replicate=number)
         unknown = sorted(set(self.units) - set(self.raw.headers))
         for header in unknown:
-            self.stop(f"the units name a column '{header}' that is not in the table.", "Write the header as it stands there.")
+            self.stop(
+                f"the units name a column '{header}' that is not in the table.", "Write the header as it stands there."
+            )
         return meanings
 
     def _ids(self, meanings: list[Meaning]) -> None:
@@ -326,7 +351,9 @@ class _Wide(_Table):
         slot.values[m.replicate] = values
         codes = np.full(n, BASIS_CODE[m.basis or "as_is"], dtype=np.int8)
         if slot.basis is not None and (slot.basis != codes).any():
-            self.stop(f"replicates of {m.quantity} stand on different bases.", "Bring them to one basis.", column=m.header)
+            self.stop(
+                f"replicates of {m.quantity} stand on different bases.", "Bring them to one basis.", column=m.header
+            )
         slot.basis = codes
         slot.censored = column.censored if slot.censored is None else slot.censored | column.censored
         if column.censored.any():
@@ -351,8 +378,8 @@ class _Long(_Table):
         groups, inverse = np.unique(keys.astype(str), return_inverse=True)
         kinds = [self._kind(str(g), int(self.raw.rows[np.flatnonzero(inverse == j)[0]])) for j, g in enumerate(groups)]
         self._text(body, first, index)
-        parsed = {c: cells.numbers(body[c], comma) for c in numbers}
-        order = sorted(range(len(groups)), key=lambda j: kinds[j] is None or kinds[j][0] != "density")
+        parsed: dict[str, cells.Column] = {c: cells.numbers(body[c], comma) for c in numbers}
+        order = sorted(range(len(groups)), key=lambda j: (kinds[j] or ("",))[0] != "density")
         for j in order:
             kind = kinds[j]
             if kind is not None:
@@ -376,15 +403,25 @@ class _Long(_Table):
         text = f"{unit_text} {basis_text}".strip() if basis_text else unit_text
         named = basis_of(basis_text) if basis_text else None
         header = f"{analyte} [{text}]" if text else analyte
-        m = read_header(header if not named else f"{analyte} [{unit_text}]", self.raw.where, {}, named or self.default_basis)
+        m = read_header(
+            header if not named else f"{analyte} [{unit_text}]", self.raw.where, {}, named or self.default_basis
+        )
         if basis_text and named is None:
-            self.stop(f"the basis '{basis_text}' is not known.", f"One of: {', '.join(BASES)}.", "basis", row, basis_text)
+            self.stop(
+                f"the basis '{basis_text}' is not known.", f"One of: {', '.join(BASES)}.", "basis", row, basis_text
+            )
             return None
         if m.problem is not None:
             self.stops.append(replace(m.problem, column="analyte", row=row, value=analyte))
             return None
         if m.kind != "quantity" or m.quantity is None or m.unit is None:
-            self.stop(f"the analyte '{analyte}' is not in the dictionary.", "See the names in the README.", "analyte", row, analyte)
+            self.stop(
+                f"the analyte '{analyte}' is not in the dictionary.",
+                "See the names in the README.",
+                "analyte",
+                row,
+                analyte,
+            )
             return None
         return m.quantity, m.unit, m.basis, m.implied_method or ""
 
@@ -424,7 +461,9 @@ class _Long(_Table):
             slot.voided = np.zeros(n, dtype=bool)
             slot.censored = np.zeros(n, dtype=bool)
             slot.u, slot.u_censored = np.full(n, np.nan), np.full(n, np.nan)
-        assert slot.voided is not None and slot.censored is not None and slot.u is not None and slot.u_censored is not None
+        assert (
+            slot.voided is not None and slot.censored is not None and slot.u is not None and slot.u_censored is not None
+        )
         taken = np.zeros(n, dtype=bool)
         for values in slot.values.values():
             taken |= ~np.isnan(values)
@@ -454,10 +493,18 @@ class _Long(_Table):
         self._stated_u(slot, rows, at, factor, parsed, quantity)
 
     def _tell_row(self, what: str, cure: str, r: int, i: int, value: str) -> None:
-        self.problems.append(Problem(what, cure, self.raw.where, int(self.raw.rows[r]), "result", value, "cell", str(self.ids[i])))
+        self.problems.append(
+            Problem(what, cure, self.raw.where, int(self.raw.rows[r]), "result", value, "cell", str(self.ids[i]))
+        )
 
     def _stated_u(
-        self, slot: Gathered, rows: np.ndarray, at: np.ndarray, factor: np.ndarray, parsed: dict[str, cells.Column], quantity: str
+        self,
+        slot: Gathered,
+        rows: np.ndarray,
+        at: np.ndarray,
+        factor: np.ndarray,
+        parsed: dict[str, cells.Column],
+        quantity: str,
     ) -> None:
         assert slot.u is not None
         if "u" in parsed:

@@ -119,7 +119,9 @@ def _zero_words(system: System, quantity: str) -> str:
     for rules in reader.derived_rules().values():
         for rule in rules:
             if rule.optional.get(quantity):
-                return f"{quantity_title(quantity)} not given: taken as 0 (any there is counts {rule.optional[quantity]})"
+                return (
+                    f"{quantity_title(quantity)} not given: taken as 0 (any there is counts {rule.optional[quantity]})"
+                )
     return ""
 
 

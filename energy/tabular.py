@@ -42,7 +42,9 @@ def read_table(source: Any, name: str | None = None) -> RawTable:
         return _from_bytes(bytes(source), name or "upload.csv")
     path = Path(source)
     if not path.is_file():
-        raise _stop(path.name, "there is no such file." if not path.exists() else "it is not a file.", "Check the path.")
+        raise _stop(
+            path.name, "there is no such file." if not path.exists() else "it is not a file.", "Check the path."
+        )
     if path.stat().st_size > LARGEST_FILE:
         raise _stop(path.name, "it is larger than 400 MB.", "Split it, or give Parquet in parts.")
     return _from_bytes(path.read_bytes(), path.name)
@@ -93,7 +95,9 @@ def _separator(header: str) -> str:
     return max(counts, key=lambda s: counts[s])
 
 
-def _assemble(parsed: list[list[str]], name: str, first_row: int, separator: str = ",", typed: bool = False) -> RawTable:
+def _assemble(
+    parsed: list[list[str]], name: str, first_row: int, separator: str = ",", typed: bool = False
+) -> RawTable:
     headers = [h.strip() for h in parsed[0]]
     while headers and not headers[-1]:
         headers.pop()
@@ -147,6 +151,7 @@ def _text(value: Any) -> str:
     if isinstance(value, bool):
         return str(value)
     if isinstance(value, (float, np.floating)):
+        value = float(value)
         if np.isnan(value):
             return ""
         return str(int(value)) if value == int(value) and abs(value) < 1e15 else repr(float(value))

@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+from functools import partial
+
 import streamlit as st
 
+from energy.assessment import demo_paths
 from energy.intake import inspect_table
 from energy.pages import session
 from energy.problems import EnergyError
@@ -28,7 +31,9 @@ def mapping_form() -> None:
     st.subheader("What the headers do not say")
     with st.form("mapping"):
         chosen = {
-            m.header: st.selectbox(f"Unit and basis of '{m.header}'", screen.unit_choices(m), index=None, key=f"unit_{m.header}")
+            m.header: st.selectbox(
+                f"Unit and basis of '{m.header}'", screen.unit_choices(m), index=None, key=f"unit_{m.header}"
+            )
             for m in lacking
         }
         if st.form_submit_button("Use these units"):
@@ -37,13 +42,15 @@ def mapping_form() -> None:
 
 
 with st.expander("Load a table", expanded=not table["demo"]):
-    upload = st.file_uploader("CSV, XLSX or Parquet; wide or long", type=["csv", "txt", "tsv", "xlsx", "parquet"], key="upload")
+    upload = st.file_uploader(
+        "CSV, XLSX or Parquet; wide or long", type=["csv", "txt", "tsv", "xlsx", "parquet"], key="upload"
+    )
     if upload is not None and st.session_state.get("taken") != upload.file_id:
         st.session_state["taken"] = upload.file_id
         session.use(upload.name, upload.getvalue())
         st.rerun()
     left, right = st.columns(2)
-    for place, path in zip((left, right), session.demo_paths(), strict=False):
+    for place, path in zip((left, right), demo_paths(), strict=False):
         if place.button(f"Demo: {path.stem.replace('_', ' ')}", key=f"demo_{path.stem}"):
             session.use(path.name, path.read_bytes())
             session.source()["demo"] = True
@@ -54,7 +61,9 @@ one, two, three = st.columns([3, 2, 2])
 kept = session.setting("law", "eu_1169_2011") or ""
 law = one.selectbox("Label law", list(laws), index=list(laws).index(kept), format_func=laws.__getitem__, key="law")
 unit = two.selectbox("Unit", screen.UNITS, index=screen.UNITS.index(session.setting("unit", "kJ/100 g")), key="unit")
-limit = three.text_input("Practical limit", value=session.setting("limit", None) or "", placeholder="5 % (default)", key="limit")
+limit = three.text_input(
+    "Practical limit", value=session.setting("limit", None) or "", placeholder="5 % (default)", key="limit"
+)
 session.keep("law", law or None)
 session.keep("unit", unit)
 session.keep("limit", limit.strip() or None)
@@ -93,7 +102,7 @@ else:
         st.dataframe(screen.problem_rows(assessment.problems), hide_index=True, width="stretch")
     st.subheader("Take it with you")
     a, b, c = st.columns(3)
-    a.download_button("Results (CSV)", lambda: screen.file_bytes(assessment, ".csv"), "results.csv", key="csv")
-    b.download_button("Evidence (XLSX)", lambda: screen.file_bytes(assessment, ".xlsx"), "evidence.xlsx", key="xlsx")
-    c.download_button("Evidence (HTML)", lambda: screen.file_bytes(assessment, ".html"), "evidence.html", key="html")
+    a.download_button("Results (CSV)", partial(screen.file_bytes, assessment, ".csv"), "results.csv", key="csv")
+    b.download_button("Evidence (XLSX)", partial(screen.file_bytes, assessment, ".xlsx"), "evidence.xlsx", key="xlsx")
+    c.download_button("Evidence (HTML)", partial(screen.file_bytes, assessment, ".html"), "evidence.html", key="html")
 session.footer()

@@ -13,9 +13,16 @@ st.title("Equations")
 table = equations()
 filters = st.columns(4)
 for place, name, title in zip(
-    filters, ("stage", "route", "source_words", "target"), ("Stage", "Route", "How it is known", "Species or use"), strict=True
+    filters,
+    ("stage", "route", "source_words", "target"),
+    ("Stage", "Route", "How it is known", "Species or use"),
+    strict=True,
 ):
-    values = sorted({part for cell in table[name] for part in str(cell).split(", ")}) if name == "target" else sorted(set(table[name]))
+    values = (
+        sorted({part for cell in table[name] for part in str(cell).split(", ")})
+        if name == "target"
+        else sorted(set(table[name]))
+    )
     picked = place.multiselect(title, values, key=f"filter_{name}", placeholder="all")
     if picked and name == "target":
         table = table[[any(p in str(cell).split(", ") for p in picked) for cell in table[name]]]
@@ -27,7 +34,9 @@ if text:
     table = table[joined.str.contains(text, case=False, regex=False)]
 st.write(f"{len(table)} entries")
 st.dataframe(
-    table[["id", "title", "stage", "route", "source", "source_words"]].rename(columns={"source_words": "how it is known"}),
+    table[["id", "title", "stage", "route", "source", "source_words"]].rename(
+        columns={"source_words": "how it is known"}
+    ),
     hide_index=True,
     width="stretch",
     height=260,

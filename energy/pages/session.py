@@ -36,7 +36,13 @@ def use(name: str, data: bytes) -> None:
 
 @st.cache_resource(max_entries=8, show_spinner=False)
 def _assess(
-    name: str, data: bytes, units: tuple[tuple[str, str], ...], target: str, law: str | None, unit: str, limit: str | None
+    name: str,
+    data: bytes,
+    units: tuple[tuple[str, str], ...],
+    target: str,
+    law: str | None,
+    unit: str,
+    limit: str | None,
 ) -> Assessment:
     samples = read_samples(data, units=dict(units), target=target, name=name)
     return assess(samples, law=law, unit=unit, limit=limit)

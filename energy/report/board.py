@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -43,11 +43,19 @@ def board(assessment: Assessment) -> pd.DataFrame:
     found.insert(0, "verdict", [word(v) for v in ge["verdict"]])
     main = rest.reindex(ge.index)
     none = np.full(len(ge), np.nan)
-    for name in ("bomb", "composition", "difference", "difference_percent", "measurement_part", "heats_part", "convention_part"):
-        found[name] = main[name] if name in main else none
+    for name in (
+        "bomb",
+        "composition",
+        "difference",
+        "difference_percent",
+        "measurement_part",
+        "heats_part",
+        "convention_part",
+    ):
+        found[name] = main.get(name, none)
     lacking = found["bomb"].isna() & found["composition"].isna()
     found.loc[lacking, ["bomb", "composition"]] = np.nan
-    found["stage"] = main["stage"] if "stage" in main else "GE"
+    found["stage"] = main.get("stage", "GE")
     found["probable_cause"] = ge["probable_cause"]
     found["next_measurement"] = ge["next_measurement"]
     found["reason"] = ge["reason"]
@@ -75,7 +83,7 @@ def text(assessment: Assessment, width: int = 118) -> str:
         "-" * 104,
     ]  # fmt: skip
     digits = 0 if assessment.shown.scale < 0.5 else 2
-    for row in found.itertuples(index=False):
+    for row in map(_Row, found.to_dict(orient="records")):
         figures = [_number(v, digits) for v in (row.bomb, row.composition, row.difference, row.measurement_part,
                                                 row.heats_part, row.convention_part)]  # fmt: skip
         name = str(row.food_name or "")
@@ -88,6 +96,16 @@ def text(assessment: Assessment, width: int = 118) -> str:
             lines.append(_wrap(f"next: {row.next_measurement}", width))
     lines += ["-" * 104, counts(assessment), "Marks: " + "  ".join(f"{m} {WORDS.get(v, v)}" for v, m in MARKS.items())]
     return "\n".join(lines)
+
+
+class _Row:
+    """One line of the board."""
+
+    def __init__(self, line: dict[Any, Any]):
+        self.__dict__.update(line)
+
+    def __getattr__(self, name: str) -> Any:
+        raise AttributeError(name)
 
 
 def _number(value: float, digits: int) -> str:

@@ -51,9 +51,7 @@ def board_table(a: Assessment) -> pd.DataFrame:
     places = {boards.word(v): k for k, v in enumerate(ORDER)}
     found = found.iloc[np.argsort([places[w] for w in found["verdict"]], kind="stable")].reset_index(drop=True)
     unit = a.shown.unit
-    table = found[["sample_id", "food_name", "verdict"]].rename(
-        columns={"sample_id": "sample", "food_name": "name"}
-    )
+    table = found[["sample_id", "food_name", "verdict"]].rename(columns={"sample_id": "sample", "food_name": "name"})
     for name, title in (
         ("bomb", f"by bomb, {unit}"),
         ("composition", f"by composition, {unit}"),
@@ -169,7 +167,9 @@ def parts_chart(a: Assessment, sample_id: str) -> alt.Chart | None:
     sums = found.groupby("part", sort=False)["contribution"].sum()
     data = pd.DataFrame({"part": list(PART_COLOURS), "value": [float(sums.get(p, 0.0)) for p in PART_COLOURS]})
     scale = alt.Scale(domain=list(PART_COLOURS), range=list(PART_COLOURS.values()))
-    base = alt.Chart(data).encode(y=alt.Y("part:N", sort=None, title=None, axis=alt.Axis(labelOverlap=False, labelFontSize=13)))
+    base = alt.Chart(data).encode(
+        y=alt.Y("part:N", sort=None, title=None, axis=alt.Axis(labelOverlap=False, labelFontSize=13))
+    )
     bars = base.mark_bar(size=18).encode(
         x=alt.X("value:Q", title=f"bomb less composition, {a.shown.unit}"),
         color=alt.Color("part:N", scale=scale, legend=None),
@@ -202,8 +202,14 @@ def symbol_table(system: System) -> pd.DataFrame:
         elif s.constant is not None:
             meaning = f"constant {s.constant:g}"
         else:
-            meaning = f"by food group: {s.row}, {str(s.column).replace('_', ' ')}" if s.slug is None else f"{s.row} of the table"
-        absent = {"missing_input": "needed", "zero_and_listed": "0 if absent, and said", "zero": "0 if absent"}[s.absent]
+            meaning = (
+                f"by food group: {s.row}, {str(s.column).replace('_', ' ')}"
+                if s.slug is None
+                else f"{s.row} of the table"
+            )
+        absent = {"missing_input": "needed", "zero_and_listed": "0 if absent, and said", "zero": "0 if absent"}[
+            s.absent
+        ]
         rows.append([s.name, meaning, s.unit, absent if s.quantity else "", s.absent_then or s.note])
     return pd.DataFrame(rows, columns=["symbol", "meaning", "unit", "if not given", "remark"])
 
@@ -225,5 +231,7 @@ def check_table(system: System) -> pd.DataFrame:
     """Printed worked values of an entry."""
     import pandas as pd
 
-    rows = [[c.name, f"{c.expected:g} {c.unit}", c.source, SOURCE_STATUS[c.source_status], c.note] for c in system.checks]
+    rows = [
+        [c.name, f"{c.expected:g} {c.unit}", c.source, SOURCE_STATUS[c.source_status], c.note] for c in system.checks
+    ]
     return pd.DataFrame(rows, columns=["worked value", "printed", "source", "known", "note"])
