@@ -1,0 +1,92 @@
+"""The shape of the code: imports point down, pint stays at the door, pages do no arithmetic."""
+
+import ast
+import subprocess
+from pathlib import Path
+
+import pytest
+
+ROOT = Path(__file__).parent.parent
+LAYERS = [
+    ["energy", "energy.problems"],
+    ["energy.units"],
+    ["energy.quantities", "energy.algebra", "energy.formula", "energy.basis"],
+    ["energy.catalogue", "energy.catalogue.records", "energy.catalogue.reader"],
+    ["energy.samples"],
+    ["energy.tabular", "energy.cells", "energy.headers", "energy.replicates", "energy.intake"],
+    ["energy.resolve"],
+    ["energy.evaluate"],
+    ["energy.display"],
+    ["energy.compare"],
+    ["energy.explain"],
+    ["energy.reasons"],
+    ["energy.views"],
+    ["energy.assessment"],
+    ["energy.report", "energy.report.tables", "energy.report.board", "energy.report.document", "energy.report.screen"],
+    ["energy.pages", "energy.pages.session", "energy.pages.bench", "energy.pages.sample", "energy.pages.equations"],
+    ["energy.__main__"],
+]
+HEIGHT = {module: level for level, modules in enumerate(LAYERS) for module in modules}
+#: an assessment can save itself; the report module is loaded inside that method
+ALLOWED = {("energy.assessment", "energy.report.tables")}
+FILES = sorted((ROOT / "energy").rglob("*.py"))
+
+
+def module_of(path: Path) -> str:
+    name = ".".join(path.relative_to(ROOT).with_suffix("").parts)
+    return name.removesuffix(".__init__")
+
+
+def at_run_time(tree: ast.Module):
+    """Imports of a module that happen when it runs: those under TYPE_CHECKING do not."""
+    for node in ast.walk(tree):
+        if isinstance(node, ast.If) and isinstance(node.test, ast.Name) and node.test.id == "TYPE_CHECKING":
+            node.body = []
+    for node in ast.walk(tree):
+        if isinstance(node, ast.Import):
+            yield from (alias.name for alias in node.names)
+        elif isinstance(node, ast.ImportFrom) and node.module:
+            yield node.module
+            yield from (f"{node.module}.{alias.name}" for alias in node.names)
+
+
+@pytest.mark.parametrize("path", FILES, ids=module_of)
+def test_every_module_has_its_place(path):
+    assert module_of(path) in HEIGHT, "give the new module its layer in this test"
+
+
+@pytest.mark.parametrize("path", FILES, ids=module_of)
+def test_imports_point_down(path):
+    me = module_of(path)
+    for other in at_run_time(ast.parse(path.read_text())):
+        if other in HEIGHT and (me, other) not in ALLOWED:
+            assert HEIGHT[other] <= HEIGHT[me], f"{me} imports {other}"
+
+
+def test_only_units_imports_pint():
+    users = [module_of(p) for p in FILES if "pint" in set(at_run_time(ast.parse(p.read_text())))]
+    assert users == ["energy.units"]
+
+
+PAGES = [*sorted((ROOT / "energy" / "pages").glob("*.py")), ROOT / "app.py"]
+
+
+@pytest.mark.parametrize("path", PAGES, ids=lambda p: p.stem)
+def test_pages_hold_no_arithmetic(path):
+    """No - * / ** anywhere in a page, and + only to join texts: every number comes from an assessment."""
+    for node in ast.walk(ast.parse(path.read_text())):
+        if isinstance(node, ast.BinOp) and not isinstance(node.op, ast.BitOr):  # `A | None` is a type
+            assert isinstance(node.op, ast.Add), f"line {node.lineno}"
+            texts = [n for n in ast.walk(node) if isinstance(n, ast.Constant)]
+            assert all(isinstance(t.value, str) for t in texts), f"line {node.lineno}"
+
+
+def test_no_file_is_called_a_drawer_of_odds_and_ends():
+    assert not [p for p in FILES if p.stem in {"util", "utils", "helper", "helpers", "common", "misc"}]
+
+
+def test_top_level_holds_only_what_the_layout_allows():
+    listed = subprocess.run(["git", "ls-files"], cwd=ROOT, capture_output=True, text=True, check=True).stdout.split()
+    tops = {name.split("/")[0] for name in listed}
+    allowed = {"README.md", "DEVELOPERS.md", "pyproject.toml", "app.py", "energy", "tests", "demo_data"}
+    assert {t for t in tops if not t.startswith(".")} <= allowed
