@@ -255,8 +255,9 @@ class Resolver:
         node = self.quantity(symbol.quantity, system.nitrogen_factor, filled=symbol.absent != "missing_input")
         if node is None:
             return None
-        if symbol.basis not in (None, "any") and not system.homogeneous:
-            node = bases.convert(node, self._dry(self.signature.working), self._dry(str(symbol.basis)))
+        working = self.signature.working
+        if symbol.basis not in (None, "any", working) and not system.homogeneous:
+            node = bases.convert(node, self._dry(working), self._dry(str(symbol.basis)))
             if node is None:
                 return None
         return multiply(1.0 / symbol.scale, node)
@@ -299,7 +300,7 @@ class Resolver:
         return self._result(multiply(scale, substitute(system.heats.node, values)), system)
 
     def _result(self, node: Node, system: System) -> Node | None:
-        if system.result_basis == "any" or system.homogeneous:
+        if system.result_basis in ("any", self.signature.working) or system.homogeneous:
             return node
         return bases.convert(node, self._dry(system.result_basis), self._dry(self.signature.working))
 

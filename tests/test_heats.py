@@ -47,4 +47,6 @@ def test_heat_of_a_pure_substance(row):
 
 @pytest.mark.parametrize("entry", HEATS.values(), ids=list(HEATS))
 def test_both_units_of_an_entry_agree(entry):
-    assert entry["kJ_per_g"] == pytest.approx(4.184 * entry["kcal_per_g"], abs=0.05)  # a source that prints both rounds them apart
+    assert entry["kJ_per_g"] == pytest.approx(
+        4.184 * entry["kcal_per_g"], abs=0.05
+    )  # a source that prints both rounds them apart

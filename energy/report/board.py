@@ -67,7 +67,8 @@ def counts(assessment: Assessment) -> str:
     table = assessment.verdicts
     found = table.loc[table["stage"] == "GE", "verdict"].value_counts()
     parts = [f"{found[v]} {WORDS.get(v, v)}" for v in MARKS if v in found]
-    return f"{int(found.sum())} samples: {', '.join(parts)}"
+    n = int(found.sum())
+    return f"{n} sample{'s' if n != 1 else ''}: {', '.join(parts)}"
 
 
 def text(assessment: Assessment, width: int = 118) -> str:
