@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, field
-from functools import cached_property
+from functools import cached_property, lru_cache
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -61,9 +61,13 @@ def assess(
     Raises StructuralProblems (table), WrongUse (an argument names nothing we have).
     """
     batch = samples if isinstance(samples, Samples) else _read(samples, target)
-    catalogue = reader.systems() if house is None else reader.with_house(house)
     aim = _target(batch, target)
-    choice = choose(catalogue, batch, aim, bomb_system, composition_system, law, limit, systems)
+    if house is None:
+        catalogue = reader.systems()
+        choice = _choose_shipped(aim, bomb_system, composition_system, law, limit, systems)
+    else:
+        catalogue = reader.with_house(house)
+        choice = choose(catalogue, aim, bomb_system, composition_system, law, limit, systems)
     blocks = evaluate(batch, choice.systems, choice.pairs)
     return Assessment(batch, choice, blocks, coverage, display.display(unit, basis, blocks.basis), catalogue)
 
@@ -101,9 +105,15 @@ def _find(catalogue: dict[str, System], identity: str, target: str, role: str) -
     return system
 
 
+@lru_cache(maxsize=64)
+def _choose_shipped(
+    target: str, bomb: str | None, composition: str | None, law: str | None, limit: float | str | None, which: str
+) -> Choice:
+    return choose(reader.systems(), target, bomb, composition, law, limit, which)
+
+
 def choose(
     catalogue: dict[str, System],
-    samples: Samples,
     target: str,
     bomb_system: str | None,
     composition_system: str | None,

@@ -220,14 +220,7 @@ def _system_status(
     used = algebra.names(node)
     required = tuple(sorted(n for n in used if not n.startswith(("@", "V@")) and not n.endswith("?")))
     optional = {n[:-1] for n in used if n.endswith("?") and is_listed(system, n[:-1])}
-    base = OK
-    for symbol in system.symbols.values():
-        if symbol.absent == "zero_and_listed" and symbol.quantity:
-            there = resolver.quantity(symbol.quantity, system.nitrogen_factor, filled=True)
-            if isinstance(there, float):
-                base = ASSUMED
-    if assumes_nitrogen_factor(resolver, system):
-        base = ASSUMED
+    base = ASSUMED if resolver.assumed(system) or assumes_nitrogen_factor(resolver, system) else OK
     factors = []
     for name in sorted(n for n in used if n.startswith("@") and n != "@nitrogen_factor"):
         parameter = resolver.parameters[name]

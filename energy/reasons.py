@@ -92,12 +92,7 @@ def _join(fixed: list[str], notes: list[tuple[np.ndarray, str]], n: int) -> np.n
 
 
 def _fixed_words(resolver: Resolver, system: System) -> list[str]:
-    words = []
-    for symbol in system.symbols.values():
-        if symbol.quantity and symbol.absent == "zero_and_listed":
-            node = resolver.quantity(symbol.quantity, system.nitrogen_factor, filled=True)
-            if isinstance(node, float):
-                words.append(_zero_words(system, symbol.quantity))
+    words = [_zero_sentence(quantity, then) for quantity, then in resolver.assumed(system).items()]
     if assumes_nitrogen_factor(resolver, system):
         words.append("nitrogen factor 6.25 assumed for the protein given")
     if system.twin == "none" and system.energy_family == "cal" and system.route == "composition":
@@ -112,17 +107,18 @@ def _zero_words(system: System, quantity: str) -> str:
         if symbol.quantity == quantity:
             if symbol.absent == "zero":
                 return ""
-            then = f" (any there is counts {symbol.absent_then})" if symbol.absent_then else ""
-            return f"{quantity_title(quantity)} not given: taken as 0{then}"
+            return _zero_sentence(quantity, symbol.absent_then)
     if quantity == "nitrogen_factor":
         return "nitrogen factor not given: 6.25 assumed"
     for rules in reader.derived_rules().values():
         for rule in rules:
             if rule.optional.get(quantity):
-                return (
-                    f"{quantity_title(quantity)} not given: taken as 0 (any there is counts {rule.optional[quantity]})"
-                )
+                return _zero_sentence(quantity, rule.optional[quantity])
     return ""
+
+
+def _zero_sentence(quantity: str, then: str) -> str:
+    return f"{quantity_title(quantity)} not given: taken as 0" + (f" (any there is counts {then})" if then else "")
 
 
 def _missing_words(samples: Samples, resolver: Resolver, system: System) -> str:

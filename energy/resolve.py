@@ -262,6 +262,25 @@ class Resolver:
                 return None
         return multiply(1.0 / symbol.scale, node)
 
+    def assumed(self, system: System) -> dict[str, str]:
+        """Quantities a system counts as zero because their column is not there -> where they then count."""
+        found: dict[str, str] = {}
+        for symbol in system.symbols.values():
+            if symbol.quantity is None:
+                continue
+            if symbol.absent == "zero_and_listed" and self._gone(symbol.quantity):
+                found[symbol.quantity] = symbol.absent_then
+            choice = self.choices.get(symbol.quantity, 0)
+            if choice > 0:
+                rule = derived_rules()[symbol.quantity][choice - 1]
+                for name, words in rule.optional.items():
+                    if words and self._gone(name):
+                        found.setdefault(name, words)
+        return found
+
+    def _gone(self, quantity: str) -> bool:
+        return isinstance(self.quantity(quantity, filled=True), float)
+
     def system(self, system: System, gross_energy: Node | None = None) -> Node | None:
         """A system's result in MJ/kg on the working basis.
 
