@@ -10,12 +10,12 @@ from typing import Any
 
 import numpy as np
 
-from energy import cells, replicates
+from energy import cells, uncertainty
 from energy.catalogue.records import TARGETS
 from energy.headers import Meaning, basis_of, read_header
 from energy.problems import Problem, StructuralProblems, UnitProblem, WrongUse
 from energy.quantities import TEXT_COLUMNS, dictionary, method_columns, normal_form, synonym_index
-from energy.samples import BASES, BASIS_CODE, U_SOURCES, Samples
+from energy.samples import BASES, BASIS_CODE, Samples
 from energy.tabular import RawTable, read_table
 from energy.units import Unit, parse_unit
 
@@ -150,7 +150,7 @@ class _Table:
         )
         for quantity, found in self.gathered.items():
             values = np.array(list(found.values.values())) if found.values else np.full((1, n), np.nan)
-            mean, count = replicates.mean_of(values)
+            mean, count = uncertainty.mean_of(values)
             samples.columns[quantity] = mean
             samples.replicates[quantity] = count
             if found.basis is not None and dictionary()[quantity].basis == "stated":
@@ -161,7 +161,9 @@ class _Table:
             voided = voided & np.isnan(mean)
             if voided.any():
                 samples.voided[quantity] = voided
-            self._uncertainty(samples, quantity, found, values)
+            samples.u[quantity], samples.u_source[quantity] = uncertainty.of_means(
+                values, dictionary()[quantity].default_u, found.u, found.u_censored
+            )
         self._check_ranges(samples)
         self._check_preparation(samples)
         self._check_text(samples)
@@ -169,23 +171,6 @@ class _Table:
             samples.memo["declared"] = self.declared
         samples.fill_default_u()
         return samples
-
-    def _uncertainty(self, samples: Samples, quantity: str, found: Gathered, values: np.ndarray) -> None:
-        n = len(self.ids)
-        u = np.full(n, np.nan) if found.u is None else found.u.copy()
-        source = np.where(np.isnan(u), 0, U_SOURCES.index("given")).astype(np.int8)
-        if found.u_censored is not None:
-            take = np.isnan(u) & ~np.isnan(found.u_censored)
-            u[take], source[take] = found.u_censored[take], U_SOURCES.index("given")
-        sd, freedom = replicates.pooled_relative_sd(values)
-        default = dictionary()[quantity].default_u
-        mean, count = samples.columns[quantity], samples.replicates[quantity]
-        if freedom >= replicates.NEEDED_FREEDOM and default is not None:
-            take = np.isnan(u) & (count >= 1)
-            between = np.hypot(default[0], default[1] * np.abs(mean[take]))
-            u[take] = np.hypot(sd * np.abs(mean[take]) / np.sqrt(count[take]), between)
-            source[take] = U_SOURCES.index("replicates")
-        samples.u[quantity], samples.u_source[quantity] = u, source
 
     def _check_ranges(self, samples: Samples) -> None:
         for quantity, values in samples.columns.items():

@@ -13,7 +13,7 @@ LAYERS = [
     ["energy.quantities", "energy.algebra", "energy.formula", "energy.basis"],
     ["energy.catalogue", "energy.catalogue.records", "energy.catalogue.reader"],
     ["energy.samples"],
-    ["energy.tabular", "energy.cells", "energy.headers", "energy.replicates", "energy.intake"],
+    ["energy.tabular", "energy.cells", "energy.headers", "energy.uncertainty", "energy.intake"],
     ["energy.resolve"],
     ["energy.evaluate"],
     ["energy.display"],

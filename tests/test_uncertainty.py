@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from energy.replicates import mean_of, pooled_relative_sd
+from energy.uncertainty import mean_of, pooled_relative_sd
 
 
 def test_mean_skips_what_is_missing():
