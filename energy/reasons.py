@@ -405,7 +405,7 @@ def questions(a: Assessment, sample_id: str) -> list[tuple[str, str]]:
             f"{VERDICTS[a.verdict[p, row]]}: bomb less composition {parts[0]:+.2f} {unit} = measurement {parts[1]:+.2f} "
             f"+ heats {parts[2]:+.2f} + convention {parts[3]:+.2f} ({b.pairs[p].bomb} against {b.pairs[p].composition})"
         )
-    probable = f"{cause[row]}. Next: {following[row]}" if cause[row] else "no cause is named: nothing needs one"
+    probable = f"{cause[row]}. Next: {following[row]}" if cause[row] else _no_cause(int(a.verdict[0, row]))
     return [
         ("What does the bomb say?", _say(a, measured, row)),
         ("Do bomb and composition describe the same material?", f"{ge}: {material}"),
@@ -414,6 +414,16 @@ def questions(a: Assessment, sample_id: str) -> list[tuple[str, str]]:
         ("If not, what is the probable cause, and what should be measured next?", probable),
         ("May the declared value stand?", _declared_words(a, row)),
     ]
+
+
+def _no_cause(code: int) -> str:
+    if code == INCONCLUSIVE:
+        return (
+            "no cause is named: the measurements do not decide. Next: more bomb runs, or a smaller u of the composition"
+        )
+    if code in (SINGLE_ROUTE, NOT_COMPUTED):
+        return "no cause is named: there is nothing to compare. Next: the route that is missing"
+    return "no cause is named: nothing needs one"
 
 
 def _say(a: Assessment, i: int, row: int) -> str:

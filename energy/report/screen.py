@@ -61,7 +61,8 @@ def board_table(a: Assessment) -> pd.DataFrame:
         ("convention_part", "convention part"),
     ):
         table[title] = np.round(found[name].astype(float), 1 if a.shown.scale < 0.5 else 3)
-    table["probable cause"] = found["probable_cause"]
+    lacking = found["verdict"].isin([boards.word("single_route"), boards.word("not_computed")])
+    table["probable cause, or what is missing"] = found["probable_cause"].where(~lacking, found["reason"])
     return table
 
 
