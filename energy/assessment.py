@@ -124,6 +124,10 @@ def choose(
     """Which systems are computed and compared; defaults from targets.toml."""
     if which not in ("default", "all"):
         raise WrongUse(f"systems = '{which}' is not known.", "Use 'default' or 'all'.")
+    if target not in reader.targets():
+        raise WrongUse(
+            f"No system for {target} is in this version.", "Use target='none' for the check of gross energy alone."
+        )
     default = reader.targets()[target]
     heats = str(default.get("gross_energy_system", "ge_heats_best"))
     laws = _laws(catalogue, target, law)

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import difflib
 from dataclasses import dataclass, field
 
 import numpy as np
 
 from energy import cells, uncertainty
+from energy.catalogue.reader import food_groups
 from energy.catalogue.records import TARGETS
 from energy.problems import Problem, StructuralProblems
 from energy.quantities import dictionary, method_columns, normal_form
@@ -160,6 +162,18 @@ class Table:
                         f"One of: {', '.join(TARGETS)}.",
                         i,
                         "target",
+                        str(value),
+                        "warning",
+                    )
+        if "food_group" in samples.text:
+            for i, value in enumerate(samples.text["food_group"]):
+                if value and value not in food_groups():
+                    near = difflib.get_close_matches(str(value), food_groups(), n=3, cutoff=0.4)
+                    self.tell(
+                        f"the food group '{value}' is not in Table 13; the sample is taken as having none.",
+                        f"Did you mean {', '.join(near)}?" if near else "See food_groups.csv in the catalogue.",
+                        i,
+                        "food_group",
                         str(value),
                         "warning",
                     )

@@ -103,6 +103,13 @@ def read_header(header: str, where: str, units: dict[str, str], basis: str | Non
         return Meaning(header, kind, quantity, replicate, basis=bare,
                        problem=_problem(header, where, what, found.cure, "unit"))  # fmt: skip
     stated = entry.basis == "stated"
+    if not stated and unit.basis not in (None, entry.basis):
+        meant = {"none": "no basis", "as_is": "the material as it is", "as_analysed": "the powder as analysed"}[
+            entry.basis
+        ]
+        what = f"{entry.title} is a figure of {meant}; on '{(unit.basis or '').replace('_', ' ')}' it would mean something else."
+        cure = f"Give '{name} [{unit.display}]', or leave the column out."
+        return Meaning(header, kind, quantity, replicate, problem=_problem(header, where, what, cure, "name"))
     on = unit.basis or (basis if stated else None)
     if stated and on is None and not is_u:
         what = f"{entry.title} in {unit.display or unit_text}: the basis is not said."

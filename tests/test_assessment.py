@@ -106,6 +106,7 @@ def test_wide_is_a_view_of_the_block(demo):
     [
         ({"target": "unicorn"}, "unicorn"),
         ({}, "for whom"),
+        ({"target": "dog"}, "No system for dog"),
         ({"target": "human", "law": "eu_1169"}, "eu_1169_2011"),
         ({"target": "human", "law": "miller_payne_1959"}, "not a law"),
         ({"target": "human", "bomb_system": "eu_1169_2011"}, "no bomb system"),
@@ -202,3 +203,13 @@ def test_equations_can_be_narrowed():
     table = energy.equations(target="human", stage="ME", route="bomb")
     assert {"bomb_atwater_general", "bomb_atwater_by_group", "miller_payne_1959"} <= set(table["id"])
     assert table.loc[table["id"] == "miller_payne_1959", "source_words"].iloc[0].startswith("recalled")
+
+
+def test_no_eater_means_the_check_of_gross_energy_alone():
+    a = energy.assess(Samples.from_arrays({**TEN, "gross_energy": [9.0]}), target="none")
+    assert a.verdicts["stage"].tolist() == ["GE"]
+
+
+def test_a_law_by_bomb_alone_is_shown_without_a_comparison_of_its_own():
+    a = energy.assess(Samples.from_arrays({**TEN, "gross_energy": [9.0]}), target="human", law="us_21cfr_101_9_e")
+    assert a.select(stage="label")["leading"].tolist() == [True]

@@ -266,3 +266,12 @@ def test_an_unused_column_is_kept_and_told():
     s = read("sample_id,fat [g/100 g as is],clerk\na,1,x\n")
     assert s.text["clerk"][0] == "x"
     assert any(p.column == "clerk" for p in s.problems)
+
+
+def test_an_unknown_food_group_is_told_with_near_ones():
+    s = read("sample_id,food_group,fat [g/100 g as is]\na,wheat_brann,1\n")
+    assert "wheat_bran" in s.problems[0].cure
+
+
+def test_moisture_on_dry_matter_is_not_taken_for_moisture():
+    assert any("mean something else" in p for p in stops("sample_id,moisture [% DM]\na,10\n"))
