@@ -312,6 +312,10 @@ class Assessment:
         """Rows of `results`, narrowed before anything long is made."""
         return views.results(self, target=target, stage=stage, system=system, sample_id=sample_id)
 
+    def inputs(self, sample_id: str | None = None) -> pd.DataFrame:
+        """What was given: value, unit, basis, u and where the u comes from."""
+        return views.inputs(self, sample_id)
+
     def explain(self, sample_id: str) -> pd.DataFrame:
         """The three parts of a sample's difference, line by line."""
         return reasons.explain(self, sample_id)

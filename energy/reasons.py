@@ -269,7 +269,7 @@ def explain(a: Assessment, sample_id: str) -> pd.DataFrame:
     k = scale_of(a.catalogue[pair.bomb], a.shown) * _factor(a, row)
     measured, at_heats = b.at_heats[p, row] + b.measurement[p, row], b.at_heats[p, row]
     lines: list[dict[str, Any]] = [
-        {"part": "measurement", "component": "gross energy, measured against computed", "amount": np.nan,
+        {"part": "measurement", "component": "gross energy", "amount": np.nan,
          "bomb": measured, "composition": at_heats, "contribution": b.measurement[p, row],
          "words": "what the bomb system makes of the measured GE, and of the GE computed from the components' heats"}
     ]  # fmt: skip
@@ -402,8 +402,9 @@ def questions(a: Assessment, sample_id: str) -> list[tuple[str, str]]:
         k = 1 / a.shown.scale * _factor(a, row)
         parts = [getattr(b, x)[p, row] * k for x in ("difference", "measurement", "heats", "convention")]
         routes = (
-            f"{VERDICTS[a.verdict[p, row]]}: bomb less composition {parts[0]:+.2f} {unit} = measurement {parts[1]:+.2f} "
-            f"+ heats {parts[2]:+.2f} + convention {parts[3]:+.2f} ({b.pairs[p].bomb} against {b.pairs[p].composition})"
+            f"{VERDICTS[a.verdict[p, row]]} in the measurement part. Bomb less composition is {parts[0]:+.2f} {unit}: "
+            f"measurement {parts[1]:+.2f}, heats {parts[2]:+.2f}, convention {parts[3]:+.2f}. The convention part is expected "
+            f"between {b.pairs[p].bomb} and {b.pairs[p].composition}"
         )
     probable = f"{cause[row]}. Next: {following[row]}" if cause[row] else _no_cause(int(a.verdict[0, row]))
     return [

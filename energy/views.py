@@ -12,6 +12,8 @@ from energy.compare import VERDICTS
 from energy.display import basis_factor, scale_of, visible
 from energy.evaluate import STATUS
 from energy.problems import WrongUse
+from energy.quantities import DISPLAY_SCALE, dictionary
+from energy.samples import BASES, U_SOURCES
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -211,6 +213,46 @@ def sources(a: Assessment) -> pd.DataFrame:
         for s in a.choice.systems
     ]  # fmt: skip
     return pd.DataFrame(rows)
+
+
+INPUT_COLUMNS = ("sample_id", "quantity", "value", "unit", "basis", "u", "u_from", "replicates", "below_limit")
+
+
+def inputs(a: Assessment, sample_id: str | None = None) -> pd.DataFrame:
+    """What was given, one row per value, in g/100 g, %, MJ/kg or g/ml on the basis it was stated on."""
+    import pandas as pd
+
+    s = a.samples
+    rows = np.arange(len(s)) if sample_id is None else np.array([a.index(sample_id)])
+    pieces = []
+    for name, values in s.columns.items():
+        here = rows[~np.isnan(values[rows])]
+        entry = dictionary()[name]
+        scale = 1 / DISPLAY_SCALE[entry.dimension]
+        unit = {"mass_fraction": "g/100 g", "fraction": "%", "energy": "MJ/kg", "density": "g/ml"}.get(
+            entry.dimension, "1"
+        )
+        basis = s.basis.get(name)
+        pieces.append(
+            pd.DataFrame(
+                {
+                    "sample_id": s.ids[here],
+                    "quantity": entry.title,
+                    "value": values[here] * scale,
+                    "unit": unit,
+                    "basis": entry.basis if basis is None else np.array(BASES, dtype=object)[basis[here]],
+                    "u": s.u[name][here] * scale,
+                    "u_from": np.array(U_SOURCES, dtype=object)[s.u_source[name][here]],
+                    "replicates": s.replicates.get(name, np.ones(len(s), dtype=int))[here],
+                    "below_limit": s.censored.get(name, np.zeros(len(s), dtype=bool))[here],
+                    "_row": here,
+                }
+            )
+        )
+    if not pieces:
+        return pd.DataFrame(columns=list(INPUT_COLUMNS))
+    table = pd.concat(pieces, ignore_index=True).sort_values("_row", kind="stable", ignore_index=True)
+    return table[list(INPUT_COLUMNS)]
 
 
 def wide(a: Assessment, quantity: str) -> pd.DataFrame:

@@ -213,3 +213,16 @@ def test_no_eater_means_the_check_of_gross_energy_alone():
 def test_a_law_by_bomb_alone_is_shown_without_a_comparison_of_its_own():
     a = energy.assess(Samples.from_arrays({**TEN, "gross_energy": [9.0]}), target="human", law="us_21cfr_101_9_e")
     assert a.select(stage="label")["leading"].tolist() == [True]
+
+
+def test_what_was_given_is_handed_back_as_stated():
+    s = energy.read_samples(b"sample_id,fat [g/kg DM],GE [kJ/g DM],u(GE) [kJ/g]\na,120,18,0.1\n", name="t.csv")
+    found = energy.assess(s, target="human").inputs("a").set_index("quantity")
+    assert found.loc["fat", ["value", "unit", "basis", "u_from"]].tolist() == [
+        pytest.approx(12.0),
+        "g/100 g",
+        "dry_matter",
+        "default",
+    ]
+    assert found["u"].iloc[1] == pytest.approx(0.1)
+    assert found["u_from"].iloc[1] == "given"

@@ -45,6 +45,8 @@ if assessment is not None:
         st.subheader("Notes")
         for note in notes:
             st.text(f"• {note}")
+    st.subheader("What was given")
+    st.dataframe(assessment.inputs(sample).drop(columns=["sample_id"]), hide_index=True, width="stretch")
     st.subheader("Every figure, with its source")
     figures = assessment.select(sample_id=sample).drop(columns=["sample_id", "target"])
     st.dataframe(figures, hide_index=True, width="stretch")

@@ -19,10 +19,10 @@ if TYPE_CHECKING:
 
 MOST_IN_DETAIL = 200
 _STYLE = """
-body{font:15px/1.5 Georgia,serif;max-width:70rem;margin:2rem auto;padding:0 1rem;color:#1c2733;background:#fff}
+body{font:15px/1.5 Georgia,serif;max-width:92rem;margin:2rem auto;padding:0 1rem;color:#1c2733;background:#fff}
 h1,h2,h3{font-weight:600;line-height:1.25} h2{margin-top:2.5rem;border-bottom:1px solid #8aa0b4} h3{margin:1.2rem 0 .3rem}
 table{border-collapse:collapse;font:13px/1.4 system-ui,sans-serif;margin:.6rem 0} td,th{padding:.2rem .6rem;text-align:left;
-border-bottom:1px solid #d5dde5;vertical-align:top} th{border-bottom:2px solid #8aa0b4} td.n{text-align:right;
+border-bottom:1px solid #d5dde5;vertical-align:top} th{border-bottom:2px solid #8aa0b4} td.n{text-align:right;white-space:nowrap;
 font-variant-numeric:tabular-nums} .scroll{overflow-x:auto} .quiet{color:#51606e;font-size:.9em} dt{font-weight:600;margin-top:.5rem}
 """
 
@@ -44,7 +44,7 @@ def document(assessment: Assessment) -> str:
         f"intervals: value &plusmn; {a.coverage:g} u; practical limit: {escape(a.choice.limit.reason)}.</p>",
         f"<p class='quiet'>Made {datetime.date.today().isoformat()} by Energy Concordance {escape(__version__)} from "
         f"{escape(a.samples.source or 'a table')}.</p>",
-        "<h2>Board of verdicts</h2>", _table(found.drop(columns=["reason", "next_measurement"])),
+        "<h2>Board of verdicts</h2>", _table(_board(found, a)),
     ]  # fmt: skip
     if len(told) < len(ids):
         parts.append(f"<p>{len(ids)} samples; the {len(told)} whose verdict is open are told in full below.</p>")
@@ -63,7 +63,9 @@ def _sample(a: Assessment, identity: str) -> str:
     parts = [f"<h2>{escape(identity)} {escape(str(name))}</h2><dl>"]
     for question, answer in a.questions(identity):
         parts.append(f"<dt>{escape(question)}</dt><dd>{escape(answer)}</dd>")
-    parts.append("</dl><h3>Energy partition, both routes</h3>")
+    parts.append("</dl><h3>What was given</h3>")
+    parts.append(_table(a.inputs(identity).drop(columns=["sample_id"])))
+    parts.append("<h3>Energy partition, both routes</h3>")
     parts.append(_table(a.partition(identity)))
     lines = a.explain(identity)
     if len(lines):
@@ -74,6 +76,23 @@ def _sample(a: Assessment, identity: str) -> str:
     notes = a.notes(identity)
     parts += ["<h3>Notes</h3><ul>", *(f"<li>{escape(n)}</li>" for n in notes), "</ul>"] if notes else []
     return "\n".join(parts)
+
+
+def _board(found: pd.DataFrame, a: Assessment) -> pd.DataFrame:
+    """The board rounded as it is read; every digit stands in the tables of the samples and in the workbook."""
+    table = found.drop(columns=["reason", "next_measurement", "stage"]).copy()
+    numbers = [
+        "bomb",
+        "composition",
+        "difference",
+        "difference_percent",
+        "measurement_part",
+        "heats_part",
+        "convention_part",
+    ]
+    table[numbers] = table[numbers].astype(float).round(1 if a.shown.scale < 0.5 else 3) + 0.0
+    table["verdict"] = table["verdict"].str.replace(" ", "\u00a0")
+    return table
 
 
 def _table(frame: pd.DataFrame) -> str:

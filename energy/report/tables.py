@@ -83,7 +83,7 @@ def _workbook(assessment: Assessment, path: Path) -> None:
 
     options = {"constant_memory": True, "strings_to_formulas": False, "strings_to_urls": False, "strings_to_numbers": False,
                "nan_inf_to_errors": True}  # fmt: skip
-    sheets = {"verdicts": assessment.verdicts, "results": assessment.results, "problems": problem_table(assessment),
+    sheets = {"verdicts": assessment.verdicts, "results": assessment.results, "inputs": assessment.inputs(), "problems": problem_table(assessment),
               "sources": assessment.sources, "balances": assessment.balances}  # fmt: skip
     with xlsxwriter.Workbook(path, options) as book:
         head = book.add_format({"bold": True, "bottom": 1})
