@@ -279,3 +279,15 @@ def test_a_batch_that_knows_only_dry_matter_works_on_it():
     a = energy.assess(Samples.from_arrays(columns, basis="dry_matter"), target="human", law="eu_1169_2011")
     assert set(a.results["basis"]) == {"dry_matter"}
     assert row(a, "eu_1169_2011")["value"] == pytest.approx(17 * 0.14 + 37 * 0.03 + 17 * 0.7)
+
+
+def test_the_hand_written_numpy_of_the_benchmark_says_the_same():
+    """A second route for every block: slopes written out by hand in tests/benchmarks/bench_assess.py."""
+    import importlib.util
+    from pathlib import Path
+
+    path = Path(__file__).parent / "benchmarks" / "bench_assess.py"
+    spec = importlib.util.spec_from_file_location("bench_assess", path)
+    module = importlib.util.module_from_spec(spec)
+    spec.loader.exec_module(module)
+    module.agree(module.batch(200))

@@ -95,9 +95,9 @@ def chunk(m, p, f, a, t, s, g, um, up, uf, ua, ut, us, ug, value, u, pair):
     rest = 1 - m - p - f - a - s - t
     kcal2 = KCAL**2
     model = (
-        (0.15**2 * kcal2) * p * p
-        + (0.1**2 * kcal2) * f * f
-        + (0.08**2 * kcal2) * rest * rest
+        (0.28**2 * kcal2) * p * p
+        + (0.13**2 * kcal2) * f * f
+        + (0.16**2 * kcal2) * rest * rest
         + 0.27**2 * s * s
         + 0.25 * t * t
     )
