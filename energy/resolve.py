@@ -14,7 +14,7 @@ from functools import cached_property
 import numpy as np
 
 from energy import basis as bases
-from energy.algebra import Node, add, multiply, power, slope, substitute
+from energy.algebra import Node, add, multiply, power, scale, slope, substitute
 from energy.catalogue.reader import derived_rules, food_groups, table
 from energy.catalogue.records import Symbol, System
 from energy.samples import BASES, Samples
@@ -255,12 +255,24 @@ class Resolver:
         node = self.quantity(symbol.quantity, system.nitrogen_factor, filled=symbol.absent != "missing_input")
         if node is None:
             return None
+        node = self._taken_out(node, symbol.quantity, system)
         working = self.signature.working
         if symbol.basis not in (None, "any", working) and not system.homogeneous:
             node = bases.convert(node, self._dry(working), self._dry(str(symbol.basis)))
             if node is None:
                 return None
         return multiply(1.0 / symbol.scale, node)
+
+    def _taken_out(self, node: Node, quantity: str, system: System) -> Node:
+        """Carbohydrate by difference without what the system counts apart (FSANZ Schedule 11 and its like)."""
+        if quantity != "available_carbohydrate" or self.choices.get(quantity, 0) <= 0:
+            return node
+        for name in system.takes_out:
+            amount = self.quantity(name, filled=True)
+            if name == "unavailable_carbohydrate":  # its fibre has left already
+                amount = add(amount, scale(-1.0, self.quantity("total_dietary_fibre", filled=True)))
+            node = add(node, scale(-1.0, amount))
+        return node
 
     def assumed(self, system: System) -> dict[str, str]:
         """Quantities a system counts as zero because their column is not there -> where they then count."""

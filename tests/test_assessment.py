@@ -226,3 +226,34 @@ def test_what_was_given_is_handed_back_as_stated():
     ]
     assert found["u"].iloc[1] == pytest.approx(0.1)
     assert found["u_from"].iloc[1] == "given"
+
+
+@pytest.mark.parametrize(
+    ("name", "kilojoules"),
+    [("glycerol", 1800), ("tagatose", 1100), ("polydextrose", 500), ("unavailable_carbohydrate", 800)],
+)
+def test_what_has_its_own_factor_leaves_carbohydrate_by_difference(name, kilojoules):
+    """Schedule 11: 18, 11, 5, 8 kJ per g; 100 g of it are not counted again as carbohydrate found by difference."""
+    s = Samples.from_arrays({"moisture": [0.0], "crude_protein": [0.0], "crude_fat": [0.0], "ash": [0.0], name: [1.0]})
+    found = energy.assess(s, target="human", law="fsanz_sch11", unit="kJ/100 g").select(system="fsanz_sch11")
+    assert found["value"].tolist() == pytest.approx([kilojoules])
+
+
+@pytest.mark.parametrize("law", ["us_21cfr_101_9_c", "ca_cfia_atwater"])
+def test_sugar_alcohols_without_a_name_stay_carbohydrate(law):
+    """These laws have factors for named sugar alcohols only; a bare sum must not vanish: 100 g at 4 kcal."""
+    s = Samples.from_arrays(
+        {"crude_protein": [0.0], "crude_fat": [0.0], "carbohydrate_by_difference": [1.0], "polyols": [1.0]}
+    )
+    found = energy.assess(s, target="human", law=law, unit="kcal/100 g").select(system=law)
+    assert found["value"].tolist() == pytest.approx([400])
+
+
+def test_soluble_fibre_follows_from_the_total():
+    # 7 g protein, 2 g fat, 7 g carbohydrate, all of it fibre, 3 g insoluble: 28 + 18 + 2 x 4 = 54 kcal by method (C)
+    s = Samples.from_arrays({"crude_protein": [0.07], "crude_fat": [0.02], "carbohydrate_by_difference": [0.07],
+                             "total_dietary_fibre": [0.07], "insoluble_fibre": [0.03]})  # fmt: skip
+    found = energy.assess(s, target="human", law="us_21cfr_101_9_c", unit="kcal/100 g").select(
+        system="us_21cfr_101_9_c"
+    )
+    assert found["value"].tolist() == pytest.approx([54])

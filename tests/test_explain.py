@@ -125,7 +125,8 @@ def test_nut_studies_measured_less_than_computed():
 
     from energy.catalogue import reader
 
-    rows = list(csv.DictReader((Path(reader.FOLDER) / "measured_vs_computed.csv").open()))
+    text = (Path(reader.FOLDER) / "measured_vs_computed.csv").read_text(encoding="utf-8")
+    rows = list(csv.DictReader(text.splitlines()))
     share = {
         (r["food"], r["quantity"]): float(r["measured"]) / float(r["computed"])
         for r in rows

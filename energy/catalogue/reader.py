@@ -6,6 +6,8 @@ The same reader serves the files of this package and a house file of the user's 
 from __future__ import annotations
 
 import csv
+import math
+import re
 import tomllib
 from collections.abc import Mapping
 from functools import cache
@@ -36,6 +38,8 @@ from energy.units import parse_unit
 FOLDER = Path(__file__).parent
 #: quantities that exist only by a rule of derived.toml
 DERIVED_ONLY = ("carbohydrate_all", "solids")
+#: with a factor of their own these leave a carbohydrate found by difference; fibre and acids do so by its rule
+TAKEN_OUT = ("glycerol", "tagatose", "polydextrose", "unavailable_carbohydrate")
 NOT_SYSTEMS = ("derived", "targets", "component_heats", "food_matrix", "measured_vs_computed")
 
 
@@ -53,10 +57,17 @@ def read_file(path: Path) -> list[System]:
         note=str(about.get("note", "")),
     )
     systems: list[System] = []
-    for entry in raw.get("factor_table", []):
-        systems.extend(_factor_table(entry, publication, path))
-    for entry in raw.get("equation", []):
-        systems.append(_equation(entry, publication, path))
+    for kind, read in (("factor_table", _factor_table), ("equation", _equation)):
+        entries = raw.get(kind, [])
+        if not isinstance(entries, list):
+            raise CatalogueProblem(where, f"'{kind}' is one table.", f"Write it as [[{kind}]].")
+        for entry in entries:
+            try:
+                systems.extend(read(entry, publication, path))
+            except (KeyError, TypeError, ValueError, AttributeError, OSError) as error:
+                name = entry.get("id", "?") if isinstance(entry, dict) else "?"
+                what = f"something in it is missing or of the wrong kind ({type(error).__name__}: {error})."
+                raise CatalogueProblem(f"{where}, {name}", what, "Compare it with an entry of the same kind.") from None
     return systems
 
 
@@ -66,6 +77,37 @@ def _need(entry: Mapping[str, Any], key: str, kind: type, where: str) -> Any:
     if not isinstance(entry[key], kind):
         raise CatalogueProblem(where, f"'{key}' has the wrong type.", f"It must be a {kind.__name__}.")
     return entry[key]
+
+
+def _text(entry: Mapping[str, Any], key: str, where: str) -> str:
+    value = str(_need(entry, key, str, where)).strip()
+    if not value:
+        raise CatalogueProblem(where, f"'{key}' is empty.", f"Give {key} = ... .")
+    return value
+
+
+def _number(value: Any, what: str, where: str) -> float:
+    if isinstance(value, bool) or not isinstance(value, (int, float)) or not math.isfinite(value):
+        raise CatalogueProblem(where, f"{what} = {value!r} is not a number.", "Give a finite number.")
+    return float(value)
+
+
+def _column(entry: Mapping[str, Any], where: str) -> str:
+    """The column a table symbol reads; the table, its row and the column must be there."""
+    file, row, column = str(entry["table"]), str(entry["row"]), str(_need(entry, "column", str, where))
+    if not re.fullmatch(r"[A-Za-z0-9_]+\.csv", file) or not (FOLDER / file).is_file():
+        raise CatalogueProblem(where, f"there is no table '{file[:60]}'.", "Name a CSV file of the catalogue.")
+    found = [r for (slug, part), r in table(file).items() if part == row and entry.get("slug") in (None, slug)]
+    if not found:
+        raise CatalogueProblem(where, f"the table has no row '{row}'.", "See the CSV file.")
+    if column not in found[0]:
+        raise CatalogueProblem(where, f"the table has no column '{column}'.", f"One of: {', '.join(found[0])}.")
+    for cell in (r[column] for r in found):
+        try:
+            float(cell)
+        except ValueError:
+            raise CatalogueProblem(where, f"column '{column}' holds '{cell}'.", "Choose a column of numbers.") from None
+    return column
 
 
 def _one_of(entry: Mapping[str, Any], key: str, allowed: Any, where: str, default: str | None = None) -> str:
@@ -78,7 +120,11 @@ def _one_of(entry: Mapping[str, Any], key: str, allowed: Any, where: str, defaul
 
 
 def _common(entry: Mapping[str, Any], publication: Publication, path: Path) -> dict[str, Any]:
-    identity = _need(entry, "id", str, path.name)
+    identity = str(_need(entry, "id", str, path.name))
+    if not re.fullmatch(r"[A-Za-z][A-Za-z0-9_.]*", identity):
+        raise CatalogueProblem(
+            path.name, f"the id '{identity[:40]}' is not a plain name.", "Use letters, digits and _."
+        )
     where = f"{path.name}, {identity}"
     targets = tuple(_need(entry, "target", list, where))
     for target in targets:
@@ -89,11 +135,11 @@ def _common(entry: Mapping[str, Any], publication: Publication, path: Path) -> d
     if not publication.citation.strip() or not locator.strip():
         raise CatalogueProblem(where, "a number without its place in a source.", "Give citation and locator.")
     nitrogen = entry.get("nitrogen_factor", "own")
-    if nitrogen == "" or (isinstance(nitrogen, str) and nitrogen != "own"):
-        raise CatalogueProblem(where, f"nitrogen_factor '{nitrogen}' is not known.", "A number, or 'own'.")
+    if nitrogen != "own" and not 4 <= _number(nitrogen, "nitrogen_factor", where) <= 7:
+        raise CatalogueProblem(where, f"nitrogen_factor {nitrogen} is not plausible.", "From 4 to 7, or 'own'.")
     return {
         "id": identity,
-        "title": str(_need(entry, "title", str, where)),
+        "title": _text(entry, "title", where),
         "targets": targets,
         "stage": _one_of(entry, "stage", STAGES, where),
         "kind": str(entry.get("kind", "")),
@@ -114,15 +160,21 @@ def _common(entry: Mapping[str, Any], publication: Publication, path: Path) -> d
 
 
 def _check(entry: Mapping[str, Any], where: str) -> Check:
+    tolerance = _number(_need(entry, "tolerance", object, where), "tolerance", where)
+    if tolerance < 0:
+        raise CatalogueProblem(where, f"the tolerance {tolerance} is negative.", "Give it as a positive number.")
+    _unit(str(_need(entry, "unit", str, where)), None, where)
     return Check(
         name=str(_need(entry, "name", str, where)),
-        inputs={str(k): float(v) for k, v in _need(entry, "inputs", dict, where).items()},
+        inputs={
+            _known_quantity(str(k), where): _number(v, k, where) for k, v in _need(entry, "inputs", dict, where).items()
+        },
         inputs_unit=str(entry.get("inputs_unit", "")),
         units={str(k): str(v) for k, v in entry.get("units", {}).items()},
         text={str(k): str(v) for k, v in entry.get("text", {}).items()},
-        expected=float(entry["expected"]),
+        expected=_number(_need(entry, "expected", object, where), "expected", where),
         unit=str(_need(entry, "unit", str, where)),
-        tolerance=float(entry["tolerance"]),
+        tolerance=tolerance,
         kind=_one_of(entry, "kind", ("published", "worked_by_hand"), where),
         source=str(_need(entry, "source", str, where)),
         source_status=_one_of(entry, "source_status", SOURCE_STATUS, where),
@@ -168,7 +220,7 @@ def _factor_table(entry: Mapping[str, Any], publication: Publication, path: Path
     where = f"{path.name}, {common['id']}"
     leading = _one_of(entry, "leading", ("kJ", "kcal"), where)
     twin = _one_of(entry, "twin", TWINS, where)
-    basis = str(entry.get("basis", "as_is"))
+    basis = _one_of(entry, "basis", ("as_is", "dry_matter", "any"), where)
     lines = _need(entry, "component", list, where)
     other = "kcal" if leading == "kJ" else "kJ"
     systems = [_sum_of_components(common, lines, leading, basis, path)]
@@ -198,6 +250,8 @@ def _sum_of_components(
     statuses = [common["source_status"]]
     for line in lines:
         component = _component(line, unit, where)
+        if component.quantity in {c.quantity for c in components}:
+            raise CatalogueProblem(where, f"'{component.quantity}' is counted twice.", "Keep one component of it.")
         components.append(component)
         statuses.append(component.source_status)
         names = [_amount_symbol(q, component if q == component.quantity else None, basis, symbols, where)
@@ -210,8 +264,10 @@ def _sum_of_components(
             terms.append(f"{component.factor:g}*{amount}")
         else:
             terms.append(f"0*{amount}")
+    subtracted = {q for c in components for q in c.subtract}
     return System(
         **{**common, "source_status": weakest(statuses)},
+        takes_out=tuple(c.quantity for c in components if c.quantity in TAKEN_OUT and c.quantity not in subtracted),
         formula=_formula(" + ".join(terms), where),
         symbols=symbols,
         result_unit=f"{unit}/g",
@@ -234,7 +290,7 @@ def _component(line: Mapping[str, Any], unit: str, where: str) -> Component:
         name=name,
         quantity=_known_quantity(str(_need(line, "quantity", str, place)), place),
         subtract=tuple(_known_quantity(str(q), place) for q in line.get("subtract", ())),
-        factor=None if "table" in line else float(line[unit]),
+        factor=None if "table" in line else _number(line[unit], unit, place),
         absent=absent,
         absent_then=then,
         source_status=_one_of(line, "source_status", SOURCE_STATUS, place),
@@ -268,7 +324,7 @@ def _table_symbol(line: Mapping[str, Any], symbols: dict[str, Symbol], where: st
         unit=f"{line['unit']}/g",
         table=str(line["table"]),
         row=str(line["row"]),
-        column=str(line["column"]),
+        column=_column(line, where),
         slug=line.get("slug"),
     )
     return name
@@ -277,7 +333,7 @@ def _table_symbol(line: Mapping[str, Any], symbols: dict[str, Symbol], where: st
 # ---- equations --------------------------------------------------------------------------------------------
 
 
-def _equation(entry: Mapping[str, Any], publication: Publication, path: Path) -> System:
+def _equation(entry: Mapping[str, Any], publication: Publication, path: Path) -> list[System]:
     common = _common(entry, publication, path)
     where = f"{path.name}, {common['id']}"
     formula = _formula(str(_need(entry, "formula", str, where)), where)
@@ -285,6 +341,8 @@ def _equation(entry: Mapping[str, Any], publication: Publication, path: Path) ->
     result, any_basis = _split_any(str(_need(entry, "result", str, where)))
     dimension = "fraction" if common["stage"] == "digestibility" else "energy"
     unit = _unit(result, dimension, where)
+    if not any_basis and unit.basis is None and dimension == "energy":
+        raise CatalogueProblem(where, f"result '{result}' has no basis.", "Write for example 'kcal/g as is', or 'any'.")
     declared = _need(entry, "symbols", dict, where)
     symbols = {name: _symbol(name, s, unit.scale, where) for name, s in declared.items()}
     unknown = sorted((formula.symbols | (heats.symbols if heats else frozenset())) - set(symbols))
@@ -297,7 +355,21 @@ def _equation(entry: Mapping[str, Any], publication: Publication, path: Path) ->
     for b in entry.get("domain", ()):
         if b.get("symbol") not in symbols and b.get("symbol") != "result":
             raise CatalogueProblem(where, f"the domain names '{b.get('symbol')}'.", "Use a symbol of the formula.")
-        bounds.append(Bound(b["symbol"], b.get("low"), b.get("high"), str(b.get("locator", ""))))
+        low, high = (None if b.get(k) is None else _number(b[k], k, where) for k in ("low", "high"))
+        bounds.append(Bound(b["symbol"], low, high, str(b.get("locator", ""))))
+    return [_system_of(common, entry, formula, heats, symbols, unit, any_basis, bounds)]
+
+
+def _system_of(
+    common: dict[str, Any],
+    entry: Mapping[str, Any],
+    formula: Formula,
+    heats: Formula | None,
+    symbols: dict[str, Symbol],
+    unit: Any,
+    any_basis: bool,
+    bounds: list[Bound],
+) -> System:
     return System(
         **common,
         formula=formula,
@@ -308,8 +380,8 @@ def _equation(entry: Mapping[str, Any], publication: Publication, path: Path) ->
         result_basis="any" if any_basis else (unit.basis or "as_is"),
         energy_family=unit.energy_family or "",
         by_group=any(s.table and s.slug is None and s.fallback is None for s in symbols.values()),
-        residual_sd=entry.get("residual_sd"),
-        r2=entry.get("r2"),
+        residual_sd=None if "residual_sd" not in entry else _number(entry["residual_sd"], "residual_sd", common["id"]),
+        r2=None if "r2" not in entry else _number(entry["r2"], "r2", common["id"]),
         domain=tuple(bounds),
         requires_methods={k: tuple(v) for k, v in entry.get("requires_methods", {}).items()},
     )
@@ -331,20 +403,27 @@ def _symbol(name: str, entry: Mapping[str, Any], result_scale: float, where: str
         unit = _unit(text, known.dimension if known else "mass_fraction", place)
         absent, then = _absent(entry, place)
         fixed = known is not None and known.basis != "stated"
-        basis = "any" if any_basis else (None if fixed else unit.basis or "as_is")
+        if not any_basis and not fixed and unit.basis is None:
+            raise CatalogueProblem(place, f"unit '{text}' has no basis.", "Write for example 'g/g as is', or 'any'.")
+        basis = "any" if any_basis else (None if fixed else unit.basis)
         return Symbol(**common, quantity=quantity, scale=unit.scale, basis=basis, absent=absent, absent_then=then)
     unit = _unit(text, None, place) if text not in ("", "1") else None
     # energies per gram enter a formula in the unit of its result, percentages as fractions
     scale = 1.0 if unit is None else unit.scale / (result_scale if unit.dimension == "energy" else 1.0)
     scale = 1.0 if abs(scale - 1.0) < 1e-12 else scale
     if "constant" in entry:
-        return Symbol(**common, constant=float(entry["constant"]), scale=scale, u=float(entry.get("u", 0.0)))
+        return Symbol(
+            **common,
+            constant=_number(entry["constant"], "constant", place),
+            scale=scale,
+            u=_number(entry.get("u", 0.0), "u", place),
+        )
     fallback = entry.get("fallback")
     return Symbol(
         **common,
         table=str(entry["table"]),
         row=str(entry["row"]),
-        column=str(_need(entry, "column", str, place)),
+        column=_column(entry, place),
         slug=entry.get("slug"),
         fallback=None if fallback is None else float(fallback),
         scale=scale,

@@ -153,6 +153,7 @@ class System:
     requires_methods: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
     excludes: tuple[str, ...] = ()
     components: tuple[Component, ...] = ()
+    takes_out: tuple[str, ...] = ()  # determined apart: leaves a carbohydrate that was found by difference
     checks: tuple[Check, ...] = ()
     note: str = ""
     file: str = ""
