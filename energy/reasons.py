@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -9,7 +10,7 @@ import numpy as np
 from energy.catalogue import reader
 from energy.catalogue.records import SOURCE_STATUS, System
 from energy.compare import BIASED, CONCORDANT, DISCORDANT, INCONCLUSIVE, NOT_COMPUTED, SINGLE_ROUTE, VERDICTS
-from energy.display import basis_factor, quantity_values, scale_of
+from energy.display import basis_factor, quantity_values, scale_of, visible
 from energy.evaluate import (
     METHOD,
     MISSING,
@@ -251,6 +252,14 @@ def main_pair(a: Assessment, row: int) -> int | None:
     return None
 
 
+def shown_system(a: Assessment, identity: str) -> System:
+    """The system itself, or its twin where that one's own sum stands in the unit shown."""
+    system = a.catalogue[identity]
+    if system.twin_id in a.blocks.systems and not visible(system, a.shown):
+        return a.catalogue[str(system.twin_id)]
+    return system
+
+
 def _factor(a: Assessment, row: int) -> float:
     factor = basis_factor(a.samples, a.blocks.basis, a.shown.basis)
     return float(factor if isinstance(factor, float) else factor[row])
@@ -266,7 +275,10 @@ def explain(a: Assessment, sample_id: str) -> pd.DataFrame:
     if p is None:
         return pd.DataFrame(columns=columns)
     b, pair = a.blocks, a.blocks.pairs[p]
-    k = scale_of(a.catalogue[pair.bomb], a.shown) * _factor(a, row)
+    composition = shown_system(a, pair.composition)
+    k, k_composition = (scale_of(s, a.shown) * _factor(a, row) for s in (a.catalogue[pair.bomb], composition))
+    # the twin's own sum stands on the label in this unit; the change belongs to the convention
+    change = b.value[b.row(composition.id), row] - b.value[b.row(pair.composition), row]
     measured, at_heats = b.at_heats[p, row] + b.measurement[p, row], b.at_heats[p, row]
     lines: list[dict[str, Any]] = [
         {"part": "measurement", "component": "gross energy", "amount": np.nan,
@@ -277,20 +289,24 @@ def explain(a: Assessment, sample_id: str) -> pd.DataFrame:
         "crude_protein", "crude_fat", "carbohydrate_all", "alcohol", "total_dietary_fibre", "polyols",
         "organic_acids", "sugars", "starch")}  # fmt: skip
     amounts = component_amounts(values, _own_factor(a.samples, row))
-    for line in parts_by_component(a.samples, row, pair, a.catalogue, amounts):
+    for line in parts_by_component(a.samples, row, replace(pair, composition=composition.id), a.catalogue, amounts):
         if line["component"] == "protein":
             line["amount"] *= amounts["own_factor"]
         what = "general heats against the best heats for it" if line["part"] == "heats" else _convention_words(line)
         lines.append({**line, "words": what})
     for part in ("heats", "convention"):
-        rest = getattr(b, part)[p, row] - sum(x["contribution"] for x in lines if x["part"] == part)
+        whole = getattr(b, part)[p, row] - (change if part == "convention" else 0.0)
+        rest = whole - sum(x["contribution"] for x in lines if x["part"] == part)
         if abs(rest) > 1e-9:
             lines.append({"part": part, "component": "columns that do not agree", "amount": np.nan, "bomb": np.nan,
                           "composition": np.nan, "contribution": rest,
                           "words": "the table gives carbohydrate in two ways that differ"})  # fmt: skip
     frame = pd.DataFrame(lines)
-    for name in ("bomb", "composition", "contribution"):
-        frame[name] = frame[name] * k
+    other = np.where(frame["part"] == "convention", k_composition, k)
+    shift = np.nan_to_num(frame["composition"].to_numpy(dtype=float)) * (other - k)
+    frame["bomb"] = frame["bomb"] * k
+    frame["composition"] = frame["composition"] * other
+    frame["contribution"] = frame["contribution"] * k - shift
     frame["amount"] = 100 * frame["amount"] * _factor(a, row)
     frame["unit"] = a.shown.unit
     return frame[columns]
@@ -319,13 +335,11 @@ def partition(a: Assessment, sample_id: str) -> pd.DataFrame:
     row, b = a.index(sample_id), a.blocks
     p = main_pair(a, row)
     pairs = [q for q in range(len(b.pairs)) if row in pair_rows(a, q)]
-    pair = b.pairs[p if p is not None else pairs[-1]]
-    if p == 0 and len(pairs) > 1:
-        pair = b.pairs[pairs[1]]
+    pair = b.pairs[p or pairs[min(1, len(pairs) - 1)]]
     lines = []
     for route, start, end in (
         ("bomb", b.pairs[0].bomb, pair.bomb),
-        ("composition", b.pairs[0].heats, pair.composition),
+        ("composition", b.pairs[0].heats, shown_system(a, pair.composition).id),
     ):
         top, bottom = (_figure(a, x, row) for x in (start, end))
         lines.append(_line(a, route, "gross energy", start, row, top))
@@ -393,18 +407,17 @@ def questions(a: Assessment, sample_id: str) -> list[tuple[str, str]]:
     material = pair_reasons(a, 0, np.array([row]))[0]
     leads = [
         f"{STAGE_WORDS[s.stage]}: {_say(a, b.row(s.id), row)} by {s.id}"
-        for s in a.choice.systems
-        if a.leading[b.row(s.id), row]
+        for s in (shown_system(a, x.id) for x in a.choice.systems if a.leading[b.row(x.id), row])
     ]
     if p is None:
         routes = "one route only: nothing to compare"
     else:
-        k = 1 / a.shown.scale * _factor(a, row)
-        parts = [getattr(b, x)[p, row] * k for x in ("difference", "measurement", "heats", "convention")]
+        sums = explain(a, sample_id).groupby("part")["contribution"].sum()
+        parts = [sums.sum(), *(sums.get(x, 0.0) for x in ("measurement", "heats", "convention"))]
         routes = (
             f"{VERDICTS[a.verdict[p, row]]} in the measurement part. Bomb less composition is {parts[0]:+.2f} {unit}: "
             f"measurement {parts[1]:+.2f}, heats {parts[2]:+.2f}, convention {parts[3]:+.2f}. The convention part is expected "
-            f"between {b.pairs[p].bomb} and {b.pairs[p].composition}"
+            f"between {b.pairs[p].bomb} and {shown_system(a, b.pairs[p].composition).id}"
         )
     probable = f"{cause[row]}. Next: {following[row]}" if cause[row] else _no_cause(int(a.verdict[0, row]))
     return [
@@ -424,7 +437,7 @@ def _no_cause(code: int) -> str:
         )
     if code in (SINGLE_ROUTE, NOT_COMPUTED):
         return "no cause is named: there is nothing to compare. Next: the route that is missing"
-    return "no cause is named: nothing needs one"
+    return "no cause is named: bomb and composition describe the same material"
 
 
 def _say(a: Assessment, i: int, row: int) -> str:
@@ -436,12 +449,19 @@ def _say(a: Assessment, i: int, row: int) -> str:
 
 
 def _declared_words(a: Assessment, row: int) -> str:
-    declared = a.samples.columns.get("declared_energy")
-    if declared is None or np.isnan(declared[row]):
+    """The declared figures as they were declared: two figures, neither converted into the other."""
+    declared = a.samples.memo.get("declared", {})
+    said = [
+        f"{declared[unit][row]:.4g} {unit}/100 g"
+        for unit in ("kJ", "kcal")
+        if unit in declared and np.isfinite(declared[unit][row])
+    ]
+    given = a.samples.columns.get("declared_energy")
+    if not said and given is not None and np.isfinite(given[row]):  # declared in a unit that is neither
+        said = [f"{given[row] * 100:.4g} kJ/100 g (converted from the unit declared)"]
+    if not said:
         return "none is declared"
-    return (
-        f"declared {declared[row] / a.shown.scale:.4g} {a.shown.unit} as is; the law's tolerance is not judged here yet"
-    )
+    return f"declared {' and '.join(said)} as is; the law's tolerance is not judged here yet"
 
 
 __all__ = ["STATUS", "Signature", "causes", "explain", "figure_reasons", "notes", "pair_rows", "partition", "questions"]
