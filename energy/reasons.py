@@ -292,7 +292,11 @@ def explain(a: Assessment, sample_id: str) -> pd.DataFrame:
     for line in parts_by_component(a.samples, row, replace(pair, composition=composition.id), a.catalogue, amounts):
         if line["component"] == "protein":
             line["amount"] *= amounts["own_factor"]
-        what = "general heats against the best heats for it" if line["part"] == "heats" else _convention_words(line)
+        what = (
+            "general heats against the best heats for it"
+            if line["part"] == "heats"
+            else _convention_words(line, a.shown.family)
+        )
         lines.append({**line, "words": what})
     for part in ("heats", "convention"):
         whole = getattr(b, part)[p, row] - (change if part == "convention" else 0.0)
@@ -312,9 +316,12 @@ def explain(a: Assessment, sample_id: str) -> pd.DataFrame:
     return frame[columns]
 
 
-def _convention_words(line: dict[str, Any]) -> str:
-    per_bomb, per_other = line["bomb"] / line["amount"], line["composition"] / line["amount"]
-    return f"{per_bomb:.1f} kJ/g by the bomb system, {per_other:.1f} kJ/g by the composition system"
+def _convention_words(line: dict[str, Any], family: str | None) -> str:
+    """What a gram is worth to each system, in the family of units shown: a kcal factor is not told in kJ."""
+    unit, size = ("kcal/g", 4.184) if family == "cal" else ("kJ/g", 1.0)
+    per_bomb, per_other = (line[x] / line["amount"] / size for x in ("bomb", "composition"))
+    digits = 2 if family == "cal" else 1
+    return f"{per_bomb:.{digits}f} {unit} by the bomb system, {per_other:.{digits}f} {unit} by the composition system"
 
 
 def _own_factor(samples: Samples, row: int) -> float:

@@ -1,5 +1,6 @@
 """The three screens through Streamlit's own test client."""
 
+import re
 from pathlib import Path
 
 import pytest
@@ -28,35 +29,88 @@ def upload(at, data, name="own.csv"):
 
 
 def everything(at):
-    return " ".join(
-        str(e.value) for kind in ("markdown", "text", "error", "info", "caption", "subheader") for e in at.get(kind)
-    )
+    """All texts of the screen as people read them: signs of Markdown taken off."""
+    kinds = ("markdown", "text", "error", "info", "caption", "subheader", "html")
+    said = [str(e.proto.body if kind == "html" else e.value) for kind in kinds for e in at.get(kind)]
+    tables = [" ".join(map(str, table.value.to_numpy().ravel())) for table in (*at.table, *at.dataframe)]
+    return " ".join([*said, *tables]).replace("\\", "")
+
+
+def board(at):
+    return at.dataframe[0].value
 
 
 def test_the_demo_and_its_verdicts_stand_on_the_first_screen(app):
     assert any("Invented demo data" in e.value for e in app.info)
-    board = app.dataframe[0].value
-    assert len(board) >= 24
-    assert "✕ discordant" in set(board["verdict"])
+    assert len(board(app)) >= 24
+    assert "✕ discordant" in set(board(app)["verdict"])
+    assert "Gross energy: " in everything(app)
+
+
+def test_a_planted_slip_is_told_in_a_sentence_with_what_to_do(app):
+    # demo sample F01: its gross energy was typed in kcal and called kJ
+    assert "The gross energy looks like kilocalories entered as kilojoules" in everything(app)
+    assert "Next: compare the bomb sheet with the table" in everything(app)
+
+
+def test_a_planted_slip_opens_its_sample(app):
+    app.button(key="open_F02").click().run()
+    assert not app.exception
+    assert app.title[0].value == "Sample"
+    assert app.selectbox(key="sample_choice").value == "F02"
+
+
+def test_a_ticked_row_opens_its_sample(app):
+    first = board(app)["sample"].iloc[0]
+    app.session_state["board"] = {"selection": {"rows": [0], "columns": [], "cells": []}}
+    app.run()
+    assert not app.exception
+    assert app.title[0].value == "Sample"
+    assert app.selectbox(key="sample_choice").value == first
+
+
+def test_the_sample_looked_at_is_kept_between_pages(app):
+    app.switch_page("energy/pages/sample.py").run()
+    app.selectbox(key="sample_choice").set_value("003").run()
+    app.switch_page("energy/pages/equations.py").run()
+    app.switch_page("energy/pages/sample.py").run()
+    assert not app.exception
+    assert app.selectbox(key="sample_choice").value == "003"
+
+
+def test_choices_are_kept_between_pages(app):
+    app.selectbox(key="unit").set_value("MJ/kg DM").run()
+    app.switch_page("energy/pages/sample.py").run()
+    assert "MJ/kg" in everything(app)
+    app.switch_page("energy/pages/bench.py").run()
+    assert not app.exception
+    assert app.selectbox(key="unit").value == "MJ/kg DM"
 
 
 def test_an_uploaded_table_gets_its_board(app):
     upload(app, CSV)
-    assert app.dataframe[0].value["sample"].tolist() == ["007"]
+    assert board(app)["sample"].tolist() == ["007"]
+    assert not any("Invented" in e.value for e in app.info)
 
 
 def test_a_missing_unit_is_asked_for_and_used(app):
     upload(app, CSV.replace(b"protein [g/100 g as is]", b"protein"))
     assert any("cannot be used yet" in e.value for e in app.error)
     app.selectbox(key="unit_protein").set_value("g/100 g as is")
-    app.button[-1].click().run()
+    app.button(key="FormSubmitter:mapping-Use these units").click().run()
     assert not app.exception
-    assert app.dataframe[0].value["sample"].tolist() == ["007"]
+    assert board(app)["sample"].tolist() == ["007"]
+    app.button(key="forget").click().run()
+    assert not app.exception
+    assert any("cannot be used yet" in e.value for e in app.error)
 
 
-def test_a_missing_basis_is_asked_for(app):
-    upload(app, CSV.replace(b"protein [g/100 g as is]", b"protein [g/100 g]"))
+def test_a_missing_basis_is_asked_for_header_by_header_or_once_for_all(app):
+    upload(app, CSV.replace(b"g/100 g as is", b"g/100 g").replace(b"kJ/100 g as is", b"kJ/100 g"))
     assert app.selectbox(key="unit_protein [g/100 g]").options[0].endswith("as is")
+    app.selectbox(key="basis").set_value("as_is").run()
+    assert not app.exception
+    assert board(app)["sample"].tolist() == ["007"]
 
 
 @pytest.mark.parametrize(
@@ -64,20 +118,56 @@ def test_a_missing_basis_is_asked_for(app):
 )
 def test_a_wrong_file_is_told_without_a_traceback(app, data, word):
     upload(app, data)
-    assert any(word in " ".join(frame.value.astype(str).to_numpy().ravel()) for frame in app.dataframe)
+    assert any("cannot be used yet" in e.value for e in app.error)
+    assert word in everything(app)
+
+
+def test_a_bad_cell_is_listed_with_row_column_value_and_cure(app):
+    upload(app, CSV + b"008,second loaf,38,abc,1.6,1.8,1150\n")
+    problem = app.table[0].value.iloc[0]
+    assert [problem["row"], problem["sample"], problem["value"]] == ["3", "008", "abc"]
+    assert problem["how to mend it"]
+    assert set(board(app)["sample"]) == {"007", "008"}
+
+
+def test_a_limit_that_cannot_be_read_is_told(app):
+    app.text_input(key="limit").set_value("much").run()
+    assert not app.exception
+    assert any("much" in e.value for e in app.error)
+
+
+def test_without_a_species_gross_energy_alone_is_checked(app):
+    app.selectbox(key="target").set_value("none").run()
+    assert not app.exception
+    assert app.selectbox(key="stage").options == ["gross energy"]
+    assert len(board(app)) >= 24
+
+
+def test_every_stage_gives_a_row_per_sample_and_stage(app):
+    per_stage = len(board(app))
+    app.selectbox(key="stage").set_value("every stage").run()
+    assert not app.exception
+    assert len(board(app)) == 2 * per_stage
+    assert not board(app).duplicated(["sample", "stage"]).any()
 
 
 def test_the_unit_switch_shows_the_laws_other_sum(app):
+    # Regulation (EU) 1169/2011, Annex XIV, by hand: 10 (17 + 37 + 17 + 8) = 790 kJ and 10 (4 + 9 + 4 + 2) = 190 kcal
     upload(app, b"sample_id,protein [g/100 g as is],fat [g/100 g as is],available carbohydrate [g/100 g as is],"
                 b"total dietary fibre [g/100 g as is],gross energy [kJ/100 g as is]\na,10,10,10,10,970\n")  # fmt: skip
-    assert app.dataframe[0].value["by composition, kJ/100 g"].tolist() == [790.0]
+    assert board(app)["by composition, kJ/100 g"].tolist() == [790.0]
     app.selectbox(key="unit").set_value("kcal/100 g").run()
-    assert app.dataframe[0].value["by composition, kcal/100 g"].tolist() == [190.0]
+    assert not app.exception
+    assert board(app)["by composition, kcal/100 g"].tolist() == [190.0]
+    assert not [c for c in board(app).columns if "kJ" in c]
 
 
 def test_the_board_can_be_filtered(app):
     app.multiselect(key="words").set_value(["✕ discordant"]).run()
-    assert set(app.dataframe[0].value["verdict"]) == {"✕ discordant"}
+    assert set(board(app)["verdict"]) == {"✕ discordant"}
+    app.text_input(key="search").set_value("no such name").run()
+    assert not app.exception
+    assert any("No sample fits" in e.value for e in app.info)
 
 
 def test_a_sample_shows_questions_partition_and_parts(app):
@@ -87,9 +177,43 @@ def test_a_sample_shows_questions_partition_and_parts(app):
     text = everything(app)
     for word in ("What does the bomb say?", "May the declared value stand?", "measurement part", "convention part"):
         assert word in text
-    assert len(app.table) == 2
-    for table in app.table:
+    for table in app.table[:2]:
         assert table.value["step"].tolist() == ["gross energy", "not used by the eater", "metabolizable energy"]
+    # demo sample 002 by hand: 9.6 x 17 + 2.4 x 37 + 39.6 x 17 + 7.1 x 8 = 982.0 kJ per 100 g
+    assert app.table[1].value["kJ/100 g"].iloc[2] == "982\\.0"
+    assert len(app.get("vega_lite_chart")) == 1
+
+
+def test_in_kilocalories_a_sample_shows_the_laws_own_sum(app):
+    # demo sample 002 by hand: 9.6 x 4 + 2.4 x 9 + 39.6 x 4 + 7.1 x 2 = 232.6 kcal per 100 g; 982 / 4.184 would be 234.7
+    app.selectbox(key="unit").set_value("kcal/100 g").run()
+    app.session_state["sample"] = "002"
+    app.switch_page("energy/pages/sample.py").run()
+    assert not app.exception
+    assert app.table[1].value["kcal/100 g"].iloc[2] == "232\\.6"
+
+
+def test_the_lines_of_the_three_parts_add_up_to_the_bars(app):
+    app.session_state["sample"] = "002"
+    app.switch_page("energy/pages/sample.py").run()
+    assert not app.exception
+    lines = app.table[3].value
+    named = lines["part"].where(lines["part"] != "").ffill()
+    sums = lines["makes, kJ/100 g"].str.replace("\\", "").astype(float).groupby(named).sum()
+    sentence = next(e.value for e in app.markdown if e.value.startswith("Bomb less composition")).replace("\\", "")
+    said = dict(re.findall(r"(\w+) part ([+-]?[\d.]+\d)", sentence))
+    for part in ("measurement", "heats", "convention"):
+        assert sums[part] == pytest.approx(float(said[part]), abs=0.06 * len(lines))
+
+
+def test_a_sample_names_the_sources_of_its_figures_in_words(app):
+    app.session_state["sample"] = "002"
+    app.switch_page("energy/pages/sample.py").run()
+    assert not app.exception
+    text = everything(app)
+    assert "Regulation (EU) No 1169/2011" in text
+    assert "read at the source" in text
+    assert "EU label energy" in text
 
 
 def test_a_sample_with_one_route_says_so(app):
@@ -97,6 +221,7 @@ def test_a_sample_with_one_route_says_so(app):
     app.switch_page("energy/pages/sample.py").run()
     assert not app.exception
     assert "One route only" in everything(app)
+    assert not app.get("vega_lite_chart")
 
 
 def test_equations_are_typeset_with_their_source(app):
@@ -108,9 +233,30 @@ def test_equations_are_typeset_with_their_source(app):
     assert "recalled" in everything(app)
 
 
-def test_equations_filter_narrows(app):
+def test_an_equation_ticked_in_the_table_is_shown(app):
+    app.switch_page("energy/pages/equations.py").run()
+    second = app.dataframe[0].value["id"].iloc[1]
+    app.session_state["list"] = {"selection": {"rows": [1], "columns": [], "cells": []}}
+    app.run()
+    assert not app.exception
+    assert app.selectbox(key="entry").value == second
+
+
+@pytest.mark.parametrize("name", ["target", "stage", "route", "source_words", "source"])
+def test_each_filter_of_the_equations_narrows_and_can_be_left(app, name):
     app.switch_page("energy/pages/equations.py").run()
     before = len(app.dataframe[0].value)
-    app.multiselect(key="filter_stage").set_value(["GE"]).run()
+    wanted = app.multiselect(key=f"filter_{name}").options[-1]
+    app.multiselect(key=f"filter_{name}").set_value([wanted]).run()
     assert not app.exception
     assert 0 < len(app.dataframe[0].value) < before
+    app.multiselect(key=f"filter_{name}").set_value([]).run()
+    assert not app.exception
+    assert len(app.dataframe[0].value) == before
+
+
+def test_an_equation_search_without_a_hit_says_so(app):
+    app.switch_page("energy/pages/equations.py").run()
+    app.text_input(key="filter_text").set_value("no such thing").run()
+    assert not app.exception
+    assert any("No entry fits" in e.value for e in app.info)

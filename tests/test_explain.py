@@ -187,3 +187,8 @@ def test_in_kilocalories_the_partition_ends_at_the_laws_own_sum(demo):
     assert end["value"] == pytest.approx(232.6)
     assert end["system"] == "eu_1169_2011_kcal"
     assert "232.6 kcal/100 g" in demo[0].questions("002")[2][1]
+
+
+def test_factors_are_told_in_the_unit_shown(demo):
+    words = demo[0].explain("002").query("part == 'convention'").set_index("component")["words"]
+    assert "2.00 kcal/g by the composition system" in words["dietary fibre"]  # Annex XIV: fibre 2 kcal/g

@@ -25,7 +25,14 @@ LAYERS = [
     ["energy.views"],
     ["energy.assessment"],
     ["energy.report", "energy.report.tables", "energy.report.board", "energy.report.document", "energy.report.screen"],
-    ["energy.pages", "energy.pages.session", "energy.pages.bench", "energy.pages.sample", "energy.pages.equations"],
+    [
+        "energy.pages",
+        "energy.pages.drawing",
+        "energy.pages.session",
+        "energy.pages.bench",
+        "energy.pages.sample",
+        "energy.pages.equations",
+    ],
     ["energy.__main__"],
 ]
 HEIGHT = {module: level for level, modules in enumerate(LAYERS) for module in modules}

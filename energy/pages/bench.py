@@ -6,103 +6,193 @@ from functools import partial
 
 import streamlit as st
 
-from energy.assessment import demo_paths
+from energy.assessment import Assessment, demo_paths
 from energy.intake import inspect_table
-from energy.pages import session
+from energy.pages import drawing, session
 from energy.problems import EnergyError
 from energy.report import board as boards
 from energy.report import screen
 
-st.title("Bench")
-table = session.source()
-if table["demo"]:
-    st.info("Invented demo data: no real food, maker or laboratory. Load your own table below.")
+SAMPLE_PAGE = "energy/pages/sample.py"
 
 
-def mapping_form() -> None:
+def loading() -> None:
+    """Upload, demo tables, and how a table is to be read."""
+    table = session.source()
+    with st.expander("Load your own table", expanded=not table["demo"]):
+        upload = st.file_uploader(
+            "CSV, XLSX or Parquet; one row per sample, or one row per result",
+            type=["csv", "txt", "tsv", "xlsx", "parquet"],
+            key="upload",
+        )
+        if upload is not None and st.session_state.get("taken") != upload.file_id:
+            st.session_state["taken"] = upload.file_id
+            session.use(upload.name, upload.getvalue())
+            st.rerun()
+        left, right = st.columns(2)
+        for place, name, title, choices in (
+            (left, "basis", "Basis of figures whose header names none", screen.BASIS_CHOICES),
+            (right, "decimal", "Decimal sign", screen.DECIMAL_CHOICES),
+        ):
+            kept = session.setting(name) or ""
+            chosen = place.selectbox(
+                title, list(choices), index=list(choices).index(kept), format_func=choices.__getitem__, key=name
+            )
+            session.keep(name, chosen or None)
+        with st.container(horizontal=True):
+            for path in demo_paths():
+                if st.button(f"Invented demo: {path.stem.replace('_', ' ')}", key=f"demo_{path.stem}"):
+                    session.use(path.name, path.read_bytes(), demo=True)
+                    st.rerun()
+    if table["units"]:
+        said = "; ".join(f"{header}: {unit}" for header, unit in table["units"].items())
+        st.caption(screen.plain(f"Units given by hand: {said}"))
+        if st.button("Forget the units given by hand", key="forget"):
+            table["units"].clear()
+            st.rerun()
+
+
+def choosing() -> None:
+    """For whom, by which law, in which unit, within what limit."""
+    one, two, three, four = st.columns([2, 3, 2, 2])
+    targets = screen.targets()
+    target = one.selectbox(
+        "Species or use",
+        list(targets),
+        index=list(targets).index(session.setting("target")),
+        format_func=targets.__getitem__,
+        key="target",
+    )
+    session.keep("target", target)
+    laws = {"": "no law: the target's own systems", **screen.laws(target)}
+    kept = session.setting("law") or ""
+    law = two.selectbox(
+        "Label law",
+        list(laws),
+        index=list(laws).index(kept) if kept in laws else 0,
+        format_func=laws.__getitem__,
+        key=f"law_{target}",
+    )
+    unit = three.selectbox("Unit", screen.UNITS, index=screen.UNITS.index(session.setting("unit")), key="unit")
+    limit = four.text_input(
+        "Practical limit",
+        value=session.setting("limit") or "",
+        placeholder=screen.limit_hint(target),
+        help="A share such as 5 %, or an energy such as 100 kJ/100 g.",
+        key="limit",
+    )
+    session.keep("law", law or None)
+    session.keep("unit", unit)
+    session.keep("limit", limit.strip() or None)
+
+
+def mapping() -> None:
     """Ask for the units and bases the headers do not give."""
+    table = session.source()
     try:
-        meanings = inspect_table(table["data"], units=table["units"], name=table["name"])
+        meanings = inspect_table(
+            table["data"], units=table["units"], basis=session.setting("basis"), name=table["name"]
+        )
     except EnergyError:
         return
     lacking = screen.missing_headers(meanings)
-    if not lacking:
+    if lacking:
+        st.subheader("What the headers do not say", anchor=False)
+        with st.form("mapping"):
+            chosen = {}
+            for meaning in lacking:
+                chosen[meaning.header] = st.selectbox(
+                    f"Unit and basis of '{meaning.header}'",
+                    screen.unit_choices(meaning),
+                    index=None,
+                    placeholder="choose what the laboratory meant",
+                    key=f"unit_{meaning.header}",
+                )
+            if st.form_submit_button("Use these units", type="primary"):
+                table["units"].update({header: unit for header, unit in chosen.items() if unit})
+                st.rerun()
+    understood = screen.understood_table(meanings)
+    if len(understood):
+        with st.expander(f"Headers that are understood: {len(understood)}"):
+            st.table(screen.safe(understood), hide_index=True)
+
+
+def board(assessment: Assessment) -> None:
+    """The verdicts, filtered, with a way to each sample."""
+    stages = screen.stages(assessment)
+    st.markdown("  \n".join(f"**{screen.plain(line)}**" for line in screen.summary(assessment)))
+    place_stage, place_words, place_text = st.columns([2, 2, 1])
+    options = [*stages, "every stage"] if len(stages) > 1 else list(stages)
+    stage = place_stage.selectbox("Stage", options, format_func=lambda s: stages.get(s, s), key="stage")
+    words = place_words.multiselect("Verdict", [boards.word(v) for v in boards.MARKS], key="words", placeholder="all")
+    text = place_text.text_input("Sample or name holds", key="search")
+    table = screen.board_table(assessment, stage if stage in stages else None)
+    shown = screen.board_filter(table, words, text)
+    if shown.empty:
+        st.info("No sample fits these filters.")
         return
-    st.subheader("What the headers do not say")
-    with st.form("mapping"):
-        chosen = {
-            m.header: st.selectbox(
-                f"Unit and basis of '{m.header}'", screen.unit_choices(m), index=None, key=f"unit_{m.header}"
-            )
-            for m in lacking
-        }
-        if st.form_submit_button("Use these units"):
-            table["units"].update({header: unit for header, unit in chosen.items() if unit})
-            st.rerun()
-
-
-with st.expander("Load a table", expanded=not table["demo"]):
-    upload = st.file_uploader(
-        "CSV, XLSX or Parquet; wide or long", type=["csv", "txt", "tsv", "xlsx", "parquet"], key="upload"
-    )
-    if upload is not None and st.session_state.get("taken") != upload.file_id:
-        st.session_state["taken"] = upload.file_id
-        session.use(upload.name, upload.getvalue())
-        st.rerun()
-    left, right = st.columns(2)
-    for place, path in zip((left, right), demo_paths(), strict=False):
-        if place.button(f"Demo: {path.stem.replace('_', ' ')}", key=f"demo_{path.stem}"):
-            session.use(path.name, path.read_bytes())
-            session.source()["demo"] = True
-            st.rerun()
-
-laws = {"": "no law: general Atwater beside the bomb", **screen.laws("human")}
-one, two, three = st.columns([3, 2, 2])
-kept = session.setting("law", "eu_1169_2011") or ""
-law = one.selectbox("Label law", list(laws), index=list(laws).index(kept), format_func=laws.__getitem__, key="law")
-unit = two.selectbox("Unit", screen.UNITS, index=screen.UNITS.index(session.setting("unit", "kJ/100 g")), key="unit")
-limit = three.text_input(
-    "Practical limit", value=session.setting("limit", None) or "", placeholder="5 % (default)", key="limit"
-)
-session.keep("law", law or None)
-session.keep("unit", unit)
-session.keep("limit", limit.strip() or None)
-
-assessment = session.current()
-if assessment is None:
-    mapping_form()
-else:
-    st.subheader("Board of verdicts")
-    st.write(f"**{boards.counts(assessment)}.** Do bomb and composition describe the same material?")
-    table_shown = screen.board_table(assessment)
-    first, second = st.columns([2, 1])
-    words = first.multiselect("Verdicts", [boards.word(v) for v in boards.MARKS], key="words", placeholder="all")
-    text = second.text_input("Sample or name holds", key="search")
-    shown = screen.board_filter(table_shown, words, text)
     picked = st.dataframe(
-        shown.style.apply(screen.verdict_styles, subset=["verdict"]).format(precision=1, na_rep=""),
+        shown.style.apply(drawing.verdict_styles, subset=["verdict"]).format(screen.board_formats(shown), na_rep=""),
         hide_index=True,
         width="stretch",
         on_select="rerun",
         selection_mode="single-row",
-        height=430,
+        height=398 if len(shown) > 10 else "auto",
+        placeholder="",
+        column_order=[c for c in shown.columns if c != "stage" or stage not in stages],
+        column_config={
+            "sample": st.column_config.TextColumn(width=70),
+            "name": st.column_config.TextColumn(width=270),
+            "verdict": st.column_config.TextColumn(width=125),
+            "probable cause, or what is missing": st.column_config.TextColumn(width="large"),
+            "to measure next": st.column_config.TextColumn(width="large"),
+        },
         key="board",
+    )
+    st.caption(
+        "Tick a row to open its sample. The verdict answers whether bomb and composition describe the same material: it "
+        "is about the measurement part. The convention part is expected and nobody's fault. "
+        f"Limit: {assessment.choice.limit.reason}. Energies {assessment.shown.basis.replace('_', ' ')}. "
+        f"{screen.unit_sentence(assessment)}"
     )
     rows = picked["selection"]["rows"]
     if rows:
-        st.session_state["sample"] = str(shown.iloc[rows[0]]["sample"])
-        st.switch_page("energy/pages/sample.py")
-    st.caption(
-        "Tick a row to open the sample. Difference = bomb less composition = measurement part + heats part + convention "
-        "part. The verdict is about the measurement part; the convention part is expected and nobody's fault. "
-        f"Limit: {assessment.choice.limit.reason}. Energies {assessment.shown.basis.replace('_', ' ')}."
-    )
+        open_sample(str(shown.iloc[rows[0]]["sample"]))
+    waiting = screen.to_look_at(shown)
+    if waiting:
+        st.subheader("To look at first", anchor=False)
+        for sample, title, sentence in waiting:
+            words_place, button_place = st.columns([6, 1], vertical_alignment="center")
+            words_place.markdown(f"**{screen.plain(title)}**  \n{screen.plain(sentence)}")
+            if button_place.button(f"Open {sample}", key=f"open_{sample}"):
+                open_sample(sample)
+
+
+def open_sample(sample: str) -> None:
+    """Go to one sample's screen."""
+    st.session_state["sample"] = sample
+    st.switch_page(SAMPLE_PAGE)
+
+
+session.opening("Bench", "Does the bomb's energy meet the energy from composition, sample by sample?")
+if session.source()["demo"]:
+    st.info("Invented demo data: no real food, maker or laboratory.", icon=":material/science:")
+loading()
+choosing()
+assessment = session.current()
+if assessment is None:
+    mapping()
+else:
+    board(assessment)
     if assessment.problems:
-        st.subheader("Found while reading the table")
-        st.dataframe(screen.problem_rows(assessment.problems), hide_index=True, width="stretch")
-    st.subheader("Take it with you")
-    a, b, c = st.columns(3)
-    a.download_button("Results (CSV)", partial(screen.file_bytes, assessment, ".csv"), "results.csv", key="csv")
-    b.download_button("Evidence (XLSX)", partial(screen.file_bytes, assessment, ".xlsx"), "evidence.xlsx", key="xlsx")
-    c.download_button("Evidence (HTML)", partial(screen.file_bytes, assessment, ".html"), "evidence.html", key="html")
+        st.subheader("Found while reading the table", anchor=False)
+        session.problem_list(assessment.problems)
+    st.subheader("Take it with you", anchor=False)
+    with st.container(horizontal=True):
+        for title, name, key in (
+            ("Results (CSV)", "results.csv", "csv"),
+            ("Evidence (XLSX)", "evidence.xlsx", "xlsx"),
+            ("Evidence (HTML)", "evidence.html", "html"),
+        ):
+            st.download_button(title, partial(screen.file_bytes, assessment, f".{key}"), name, key=key)
 session.footer()

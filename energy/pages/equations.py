@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import pandas as pd
 import streamlit as st
 
 from energy.assessment import equations
@@ -9,63 +10,77 @@ from energy.catalogue.reader import systems
 from energy.pages import session
 from energy.report import screen
 
-st.title("Equations")
-table = equations()
-filters = st.columns(4)
-for place, name, title in zip(
-    filters,
-    ("stage", "route", "source_words", "target"),
-    ("Stage", "Route", "How it is known", "Species or use"),
-    strict=True,
-):
-    values = (
-        sorted({part for cell in table[name] for part in str(cell).split(", ")})
-        if name == "target"
-        else sorted(set(table[name]))
-    )
-    picked = place.multiselect(title, values, key=f"filter_{name}", placeholder="all")
-    if picked and name == "target":
-        table = table[[any(p in str(cell).split(", ") for p in picked) for cell in table[name]]]
-    elif picked:
-        table = table[table[name].isin(picked)]
-text = st.text_input("Title, source or id holds", key="filter_text")
-if text:
-    joined = table["id"] + " " + table["title"] + " " + table["source"]
-    table = table[joined.str.contains(text, case=False, regex=False)]
-st.write(f"{len(table)} entries")
-st.dataframe(
-    table[["id", "title", "stage", "route", "source", "source_words"]].rename(
-        columns={"source_words": "how it is known"}
-    ),
-    hide_index=True,
-    width="stretch",
-    height=260,
+FILTERS = (
+    ("target", "Species or use"),
+    ("stage", "Stage"),
+    ("route", "Route"),
+    ("source_words", "How it is known"),
+    ("source", "Source"),
 )
-if len(table):
-    chosen = st.selectbox("Entry", list(table["id"]), key="entry")
+
+
+def filtered() -> pd.DataFrame:
+    """The entries that pass the filters."""
+    table = equations()
+    wanted = {}
+    for place, (name, title) in zip(st.columns(len(FILTERS)), FILTERS, strict=True):
+        values = screen.equation_filters(table, name)
+        wanted[name] = place.multiselect(title, values, key=f"filter_{name}", placeholder="all")
+    text = st.text_input("Title, source, country or id holds", key="filter_text")
+    return screen.equation_filter(table, wanted, text)
+
+
+def choose(table: pd.DataFrame) -> str:
+    """The entry looked at: ticked in the table or taken from the list."""
+    shown = screen.equation_list(table)
+    picked = st.dataframe(
+        shown,
+        hide_index=True,
+        width="stretch",
+        height=280 if len(shown) > 7 else "auto",
+        on_select="rerun",
+        selection_mode="single-row",
+        column_config={
+            "title": st.column_config.TextColumn(width=330),
+            "how it is known": st.column_config.TextColumn(width=210),
+            "source": st.column_config.TextColumn(width="large"),
+        },
+        key="list",
+    )
+    ids = list(table["id"])
+    rows = picked["selection"]["rows"]
+    ticked = ids[rows[0]] if rows and rows[0] < len(ids) else None
+    if ticked is not None and ticked != st.session_state.get("ticked"):
+        st.session_state["entry"] = ticked
+    st.session_state["ticked"] = ticked
+    if st.session_state.get("entry") not in ids:
+        st.session_state.pop("entry", None)
+    titles = {i: f"{title}  ({i})" for i, title in zip(ids, table["title"], strict=True)}
+    return st.selectbox("Entry (or tick a row)", ids, format_func=titles.__getitem__, key="entry")
+
+
+def show(table: pd.DataFrame, chosen: str) -> None:
+    """One entry: formula, facts, symbols, factors, worked values."""
     system = systems()[chosen]
-    st.subheader(system.title)
-    st.latex(rf"\mathrm{{{system.stage}}} = {system.formula.latex}\quad\mathrm{{[{system.result_unit}]}}")
-    row = table[table["id"] == chosen].iloc[0]
-    for title, value in (
-        ("Formula as text", system.formula.text),
-        ("Source", system.citation),
-        ("Place", system.locator),
-        ("How it is known", row["source_words"]),
-        ("Domain", row["domain"] or "none printed"),
-        ("Protein from nitrogen", f"factor {system.nitrogen_factor}"),
-        ("Second unit", {"none": "none printed"}.get(system.twin, system.twin.replace("_", " "))),
-        ("Note", system.note),
-    ):
-        if value:
-            st.markdown(f"**{title}**")
-            st.text(value)
+    st.subheader(system.title, anchor=False)
+    st.latex(screen.latex_line(system))
+    domain = str(table.loc[table["id"] == chosen, "domain"].iloc[0])
+    st.table(screen.safe(screen.fact_table(system, domain)), hide_index=True, hide_header=True)
     st.markdown("**Symbols**")
-    st.dataframe(screen.symbol_table(system), hide_index=True, width="stretch")
+    st.table(screen.safe(screen.symbol_table(system)), hide_index=True)
     if system.components:
         st.markdown("**Factors**")
-        st.dataframe(screen.component_table(system), hide_index=True, width="stretch")
+        st.table(screen.safe(screen.component_table(system)), hide_index=True)
     if system.checks:
-        st.markdown("**Printed worked values it reproduces**")
-        st.dataframe(screen.check_table(system), hide_index=True, width="stretch")
+        st.markdown("**Worked values it reproduces**")
+        st.table(screen.safe(screen.check_table(system)), hide_index=True)
+
+
+session.opening("Equations", "The catalogue: every formula and factor with its source, and how it is known.")
+found = filtered()
+st.markdown(f"**{len(found)} {'entry' if len(found) == 1 else 'entries'}**")
+if found.empty:
+    st.info("No entry fits these filters.")
+else:
+    show(found, choose(found))
 session.footer()

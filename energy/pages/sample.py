@@ -4,12 +4,13 @@ from __future__ import annotations
 
 import streamlit as st
 
-from energy.pages import session
+from energy.assessment import Assessment
+from energy.pages import drawing, session
 from energy.report import screen
 
-st.title("Sample")
-assessment = session.current()
-if assessment is not None:
+
+def choose(assessment: Assessment) -> str:
+    """The sample looked at; kept between pages."""
     ids = [str(i) for i in assessment.samples.ids]
     names = dict(zip(ids, assessment.samples.text.get("name", assessment.samples.ids), strict=True))
     kept = st.session_state.get("sample", ids[0])
@@ -21,33 +22,60 @@ if assessment is not None:
         key="sample_choice",
     )
     st.session_state["sample"] = sample
+    return sample
+
+
+def questions(assessment: Assessment, sample: str) -> None:
+    """The six questions beside their answers."""
     for question, answer in assessment.questions(sample):
-        st.markdown(f"**{question}**")
-        st.text(answer)
-    st.subheader("Energy partition")
-    bomb, composition = st.columns(2)
-    bomb.markdown("**Bomb route**")
-    bomb.table(screen.partition_table(assessment, sample, "bomb").iloc[:, :4])
-    composition.markdown("**Composition route**")
-    composition.table(screen.partition_table(assessment, sample, "composition").iloc[:, :4])
-    st.subheader("The difference in three parts")
-    st.text(screen.parts_sentence(assessment, sample))
-    chart = screen.parts_chart(assessment, sample)
-    if chart is not None:
-        st.altair_chart(chart, width="stretch")
-        st.dataframe(screen.parts_table(assessment, sample), hide_index=True, width="stretch")
-        st.caption(
-            "Measurement: bomb and laboratory disagree about the material. Heats: general heats of combustion do not fit "
-            "it. Convention: the two systems value the same grams differently; nobody is at fault."
-        )
+        asked, answered = st.columns([2, 3])
+        asked.markdown(f"##### {question}")
+        answered.markdown(screen.plain(screen.answer(answer)))
+
+
+def partitions(assessment: Assessment, sample: str) -> None:
+    """From gross energy to what the eater gets, by both routes side by side."""
+    st.subheader("Energy partition", anchor=False)
+    for place, route, title in zip(
+        st.columns(2), ("bomb", "composition"), ("Bomb route", "Composition route"), strict=True
+    ):
+        place.markdown(f"**{title}**")
+        place.table(screen.safe(screen.partition_table(assessment, sample, route)), hide_index=True)
+    with st.expander("Sources of these figures"):
+        st.table(screen.safe(screen.partition_sources(assessment, sample)), hide_index=True)
+
+
+def three_parts(assessment: Assessment, sample: str) -> None:
+    """The difference as three bars and line by line."""
+    st.subheader("The difference in three parts", anchor=False)
+    st.markdown(screen.plain(screen.parts_sentence(assessment, sample)))
+    parts = screen.parts(assessment, sample)
+    if parts is None:
+        return
+    st.altair_chart(drawing.parts_chart(parts, assessment.shown.unit), width="stretch")
+    st.caption(
+        "Measurement: bomb and laboratory disagree about the material. Heats: general heats of combustion do not fit it. "
+        "Convention: the two systems value the same grams differently; nobody is at fault."
+    )
+    st.table(screen.safe(screen.parts_table(assessment, sample)), hide_index=True)
+
+
+session.opening(
+    "Sample", "One sample: six questions, the energy partition by both routes, and where the difference lies."
+)
+assessment = session.current()
+if assessment is not None:
+    sample = choose(assessment)
+    st.html(drawing.verdict_line(*screen.sample_line(assessment, sample)))
+    questions(assessment, sample)
     notes = assessment.notes(sample)
     if notes:
-        st.subheader("Notes")
-        for note in notes:
-            st.text(f"• {note}")
-    st.subheader("What was given")
-    st.dataframe(assessment.inputs(sample).drop(columns=["sample_id"]), hide_index=True, width="stretch")
-    st.subheader("Every figure, with its source")
-    figures = assessment.select(sample_id=sample).drop(columns=["sample_id", "target"])
-    st.dataframe(figures, hide_index=True, width="stretch")
+        st.subheader("Notes", anchor=False)
+        st.markdown("\n".join(f"- {screen.plain(screen.answer(note))}" for note in notes))
+    partitions(assessment, sample)
+    three_parts(assessment, sample)
+    st.subheader("What was given", anchor=False)
+    st.dataframe(screen.given_table(assessment, sample), hide_index=True, width="stretch")
+    st.subheader("Every figure, with its source", anchor=False)
+    st.dataframe(screen.figure_table(assessment, sample), hide_index=True, width="stretch", placeholder="")
 session.footer()

@@ -1,4 +1,4 @@
-"""What lives between pages: the assessment at hand and the sample looked at."""
+"""What lives between pages: the table at hand, the choices made, the assessment and the sample looked at."""
 
 from __future__ import annotations
 
@@ -8,30 +8,40 @@ import streamlit as st
 
 from energy.assessment import Assessment, assess, demo_paths
 from energy.intake import read_samples
+from energy.pages import drawing
 from energy.problems import EnergyError, StructuralProblems
 from energy.report.board import CAUTIONS
-from energy.report.screen import problem_rows
+from energy.report.screen import problem_rows, safe
+
+#: choices that outlive their widgets, and what they are until somebody chooses
+DEFAULTS: dict[str, Any] = {"target": "human", "law": "eu_1169_2011", "unit": "kJ/100 g", "limit": None,
+                            "basis": None, "decimal": None}  # fmt: skip
+
+#: so many problems are set in full
+FEW = 12
 
 
-@st.cache_data(show_spinner=False)
-def _demo_bytes() -> tuple[str, bytes]:
-    path = demo_paths()[0]
-    return path.name, path.read_bytes()
+def opening(title: str, line: str) -> None:
+    """The head of a screen."""
+    st.html(drawing.STYLE)
+    st.title(title, anchor=False)
+    st.caption(line)
 
 
 def source() -> dict[str, Any]:
     """The table at hand: its name and bytes, units given by hand, and whether it is the demo."""
     if "source" not in st.session_state:
-        name, data = _demo_bytes()
-        st.session_state["source"] = {"name": name, "data": data, "units": {}, "demo": True, "basis": None}
+        path = demo_paths()[0]
+        use(path.name, path.read_bytes(), demo=True)
     found: dict[str, Any] = st.session_state["source"]
     return found
 
 
-def use(name: str, data: bytes) -> None:
+def use(name: str, data: bytes, demo: bool = False) -> None:
     """Take another table; what was given for the old one is forgotten."""
-    st.session_state["source"] = {"name": name, "data": data, "units": {}, "demo": False, "basis": None}
-    st.session_state.pop("sample", None)
+    st.session_state["source"] = {"name": name, "data": data, "units": {}, "demo": demo}
+    for left_over in ("sample", "kept_basis", "kept_decimal", "basis", "decimal"):
+        st.session_state.pop(left_over, None)
 
 
 @st.cache_resource(max_entries=8, show_spinner=False)
@@ -39,18 +49,20 @@ def _assess(
     name: str,
     data: bytes,
     units: tuple[tuple[str, str], ...],
+    basis: str | None,
+    decimal: str | None,
     target: str,
     law: str | None,
     unit: str,
     limit: str | None,
 ) -> Assessment:
-    samples = read_samples(data, units=dict(units), target=target, name=name)
+    samples = read_samples(data, units=dict(units), basis=basis, target=target, decimal=decimal, name=name)
     return assess(samples, law=law, unit=unit, limit=limit)
 
 
-def setting(name: str, default: Any) -> Any:
+def setting(name: str) -> Any:
     """A choice that outlives its widget."""
-    return st.session_state.setdefault(f"kept_{name}", default)
+    return st.session_state.setdefault(f"kept_{name}", DEFAULTS[name])
 
 
 def keep(name: str, value: Any) -> None:
@@ -61,27 +73,38 @@ def keep(name: str, value: Any) -> None:
 def current() -> Assessment | None:
     """The assessment of the table at hand; None, with the problems on screen, if it cannot be made."""
     table = source()
-    units = tuple(sorted(table["units"].items()))
     try:
-        return _assess(
+        found: Assessment = _assess(
             table["name"],
             table["data"],
-            units,
-            setting("target", "human"),
-            setting("law", "eu_1169_2011"),
-            setting("unit", "kJ/100 g"),
-            setting("limit", None),
+            tuple(sorted(table["units"].items())),
+            setting("basis"),
+            setting("decimal"),
+            setting("target"),
+            setting("law"),
+            setting("unit"),
+            setting("limit"),
         )
+        return found
     except StructuralProblems as problems:
-        st.error(f"{table['name']} cannot be used yet: {len(problems.problems)} thing(s) to mend.")
-        st.dataframe(problem_rows(problems.problems), hide_index=True, width="stretch")
+        count = len(problems.problems)
+        st.error(f"{table['name']} cannot be used yet. To mend: {count} {'thing' if count == 1 else 'things'}.")
+        problem_list(problems.problems)
     except EnergyError as problem:
         st.error(str(problem))
     return None
 
 
+def problem_list(problems: list[Any]) -> None:
+    """Problems with row, column, value and cure: a few in full, many in a table that scrolls."""
+    rows = problem_rows(problems)
+    if len(rows) <= FEW:
+        st.table(safe(rows), hide_index=True)
+    else:
+        st.dataframe(rows, hide_index=True, width="stretch")
+
+
 def footer() -> None:
-    """The usual cautions."""
+    """The usual cautions, quietly."""
     st.divider()
-    for caution in CAUTIONS:
-        st.caption(caution)
+    st.caption(" ".join(CAUTIONS))

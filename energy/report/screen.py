@@ -1,8 +1,9 @@
-"""Tables and charts for the screens, made from an assessment, so that a page holds no arithmetic."""
+"""Tables and sentences for the screens, made from an assessment, so that a page holds no arithmetic."""
 
 from __future__ import annotations
 
-from io import BytesIO
+import re
+from functools import cache
 from pathlib import Path
 from tempfile import TemporaryDirectory
 from typing import TYPE_CHECKING, Any
@@ -10,60 +11,182 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from energy.catalogue import reader
-from energy.catalogue.records import SOURCE_STATUS, System
+from energy.catalogue.records import SOURCE_STATUS, TARGETS, System
 from energy.headers import Meaning
+from energy.quantities import dictionary
+from energy.reasons import STAGE_WORDS
 from energy.report import board as boards
 from energy.report.tables import save
 
 if TYPE_CHECKING:
-    import altair as alt
     import pandas as pd
 
     from energy.assessment import Assessment
 
-#: Okabe-Ito colours; each verdict also has its word and its own mark
-COLOURS = {
-    "concordant": "#0072B2",
-    "biased": "#56B4E9",
-    "inconclusive": "#E69F00",
-    "discordant": "#D55E00",
-    "single_route": "#7A7A7A",
-    "not_computed": "#7A7A7A",
-}
-PART_COLOURS = {"measurement": "#D55E00", "heats": "#009E73", "convention": "#0072B2"}
-UNITS = ("kJ/100 g", "kcal/100 g", "MJ/kg", "kcal/kg")
+#: a difference falls into these, in this order
+PARTS = ("measurement", "heats", "convention")
+UNITS = ("kJ/100 g", "kcal/100 g", "MJ/kg", "kcal/kg", "kJ/100 g DM", "kcal/100 g DM", "MJ/kg DM")
+BASIS_CHOICES = {"": "each header says its own", "as_is": "as is (as received, as sold)", "dry_matter": "dry matter",
+                 "as_analysed": "as analysed (the powder)"}  # fmt: skip
+DECIMAL_CHOICES = {"": "found out from the table", "point": "point: 1.5", "comma": "comma: 1,5"}
+STATUS_WORDS = {
+    "ok": "", "assumed": "with assumptions", "outside_domain": "outside its domain", "method_mismatch": "needs another "
+    "method", "missing_input": "something is not given", "missing_factor": "no factor for this food", "not_admissible":
+    "not allowed here", "problem": "a value could not be used",
+}  # fmt: skip
+U_WORDS = {"none": "not known", "given": "given", "replicates": "the replicates", "default": "the dictionary's default"}
+TWIN_WORDS = {
+    "none": "the source prints one unit only", "factors": "kJ and kcal each by factors of their own: two sums",
+    "conversion_4.184": "by conversion, 1 kcal = 4.184 kJ", "conversion_4.18": "by conversion, 1 kcal = 4.18 kJ",
+}  # fmt: skip
+TARGET_WORDS = {"human": "people", "none": "nobody: check of gross energy only"}
 
 
 def laws(target: str) -> dict[str, str]:
     """id -> what people read, of the laws a target has."""
     found = reader.systems().values()
-    return {s.id: f"{s.body}: {s.title}" for s in found if s.law and s.twin_of is None and target in s.targets
+    return {s.id: s.title for s in found if s.law and s.twin_of is None and target in s.targets
             and s.route == "composition"}  # fmt: skip
+
+
+def targets() -> dict[str, str]:
+    """id -> what people read, of the species and uses this version has systems for."""
+    return {t: TARGET_WORDS.get(t, t.replace("_", " ")) for t in TARGETS if t in reader.targets()}
+
+
+def limit_hint(target: str) -> str:
+    """The practical limit that holds when none is given."""
+    return f"{float(reader.targets()[target]['limit_act']):.0%} by default"
+
+
+@cache
+def _titles() -> tuple[re.Pattern[str], dict[str, str]]:
+    titles = {s.id: s.title for s in reader.systems().values()}
+    titles |= {verdict: words for verdict, words in boards.WORDS.items()}
+    longest_first = sorted(titles, key=len, reverse=True)
+    return re.compile(r"\b(" + "|".join(map(re.escape, longest_first)) + r")\b"), titles
+
+
+def in_words(text: str) -> str:
+    """A sentence with the titles of systems in place of their ids."""
+    pattern, titles = _titles()
+    return pattern.sub(lambda found: titles[found[1]], text)
+
+
+def answer(text: str) -> str:
+    """An answer as a sentence: titles in place of ids, a capital and a full stop."""
+    return _sentence(in_words(text))
+
+
+def plain(text: object) -> str:
+    """Text a page may set as Markdown without any of it being taken for a sign."""
+    return re.sub(r"([\\`*_${}\[\]()<>#+\-.!|~:])", r"\\\1", str(text))
+
+
+def safe(table: pd.DataFrame) -> pd.DataFrame:
+    """A table of texts for a page that sets cells as Markdown."""
+    return table.map(plain)
 
 
 #: what needs a look comes first
 ORDER = ("discordant", "inconclusive", "biased", "not_computed", "single_route", "concordant")
 
 
-def board_table(a: Assessment) -> pd.DataFrame:
-    """The board as shown: one row per sample, what needs a look first, headings in words with the unit."""
-    found = boards.board(a)
-    places = {boards.word(v): k for k, v in enumerate(ORDER)}
-    found = found.iloc[np.argsort([places[w] for w in found["verdict"]], kind="stable")].reset_index(drop=True)
-    unit = a.shown.unit
-    table = found[["sample_id", "food_name", "verdict"]].rename(columns={"sample_id": "sample", "food_name": "name"})
+def stages(a: Assessment) -> dict[str, str]:
+    """stage -> words, of the stages that were compared; what the eater gets first."""
+    found = list(dict.fromkeys(a.verdicts["stage"]))
+    return {s: STAGE_WORDS[s] for s in sorted(found, key=lambda s: s == "GE")}
+
+
+def board_table(a: Assessment, stage: str | None = None) -> pd.DataFrame:
+    """The board as shown: one row per sample and stage, what needs a look first, headings in words with the unit.
+
+    stage : one stage, or None for all. Each sample and stage is shown by its first comparison: the chosen law, or the
+    target's default.
+    """
+    found = a.verdicts.drop_duplicates(["sample_id", "stage"])
+    if stage is not None:
+        found = found[found["stage"] == stage]
+    found = found.iloc[np.argsort([ORDER.index(v) for v in found["verdict"]], kind="stable")].reset_index(drop=True)
+    table = found[["sample_id", "food_name"]].rename(columns={"sample_id": "sample", "food_name": "name"})
+    table["verdict"] = [boards.word(v) for v in found["verdict"]]
+    table["stage"] = [STAGE_WORDS[s] for s in found["stage"]]
     for name, title in (
-        ("bomb", f"by bomb, {unit}"),
-        ("composition", f"by composition, {unit}"),
+        ("bomb", f"by bomb, {a.shown.unit}"),
+        ("composition", f"by composition, {a.shown.unit}"),
         ("difference", "difference"),
+        ("difference_percent", "difference, %"),
         ("measurement_part", "measurement part"),
         ("heats_part", "heats part"),
         ("convention_part", "convention part"),
     ):
-        table[title] = np.round(found[name].astype(float), 1 if a.shown.scale < 0.5 else 3)
-    lacking = found["verdict"].isin([boards.word("single_route"), boards.word("not_computed")])
-    table["probable cause, or what is missing"] = found["probable_cause"].where(~lacking, found["reason"])
+        digits = 1 if name == "difference_percent" else _digits(a)
+        table[title] = np.round(found[name].astype(float), digits) + 0.0
+    lacking = found["verdict"].isin(["single_route", "not_computed"])
+    said = found["probable_cause"].where(~lacking, found["reason"])
+    table["probable cause, or what is missing"] = [in_words(str(text)) for text in said]
+    table["to measure next"] = found["next_measurement"]
     return table
+
+
+def _digits(a: Assessment) -> int:
+    return 1 if a.shown.scale < 0.5 else 3
+
+
+def summary(a: Assessment) -> list[str]:
+    """One line per stage that was compared: how many samples have each verdict."""
+    return [f"{words[:1].upper()}{words[1:]}: {counts(board_table(a, stage))}" for stage, words in stages(a).items()]
+
+
+def counts(table: pd.DataFrame) -> str:
+    """How many samples of a board have each verdict, in words."""
+    found = table["verdict"].value_counts()
+    words = {boards.word(v): boards.WORDS.get(v, v) for v in boards.MARKS}
+    parts = [f"{found[shown]} {word}" for shown, word in words.items() if shown in found]
+    n = table["sample"].nunique()
+    return f"{n} sample{'s' if n != 1 else ''}: {', '.join(parts)}"
+
+
+def to_look_at(table: pd.DataFrame, most: int = 6) -> list[tuple[str, str, str]]:
+    """(sample, its verdict and name, cause and next measurement) of the rows that name a cause, one per sample."""
+    named = table[(table["probable cause, or what is missing"] != "") & (table["to measure next"] != "")]
+    named = named.drop_duplicates("sample").head(most)
+    return [
+        (str(sample), f"{verdict}: {sample} {name or ''}".rstrip(), f"{_sentence(cause)} Next: {_sentence(following, False)}")
+        for sample, verdict, name, cause, following in zip(
+            named["sample"], named["verdict"], named["name"], named["probable cause, or what is missing"],
+            named["to measure next"], strict=True,
+        )
+    ]  # fmt: skip
+
+
+def _sentence(text: str, first: bool = True) -> str:
+    """Words closed by a full stop, unless they are a question."""
+    start = f"{text[:1].upper()}{text[1:]}" if first else text
+    return start if start.endswith(("?", ".")) else f"{start}."
+
+
+def board_formats(table: pd.DataFrame) -> dict[Any, Any]:
+    """How the figures of a board are printed."""
+    fine = any("MJ/kg" in str(c) for c in table.columns)
+    return {
+        str(c): "{:.1f}" if str(c).endswith("%") or not fine else "{:.3f}"
+        for c in table.columns
+        if table[c].dtype.kind == "f"
+    }
+
+
+def unit_sentence(a: Assessment) -> str:
+    """Where the figures of the composition route come from in the unit shown; '' if there is nothing to say."""
+    if a.law is None or a.shown.family is None:
+        return ""
+    law = a.catalogue[a.law]
+    unit = {"J": "kilojoules", "cal": "kilocalories"}[a.shown.family]
+    if law.twin == "factors":
+        return f"{law.title} in {unit}: the law's own sum by its factors for that unit, not a conversion."
+    if law.energy_family == a.shown.family:
+        return ""
+    return f"{law.title} in {unit}: {TWIN_WORDS[law.twin]}."
 
 
 def board_filter(table: pd.DataFrame, words: list[str], text: str) -> pd.DataFrame:
@@ -75,12 +198,6 @@ def board_filter(table: pd.DataFrame, words: list[str], text: str) -> pd.DataFra
         both = table["sample"].astype(str) + " " + table["name"].fillna("").astype(str)
         keep &= both.str.contains(text, case=False, regex=False).to_numpy()
     return table[keep]
-
-
-def verdict_styles(column: pd.Series[Any]) -> list[str]:
-    """Text colour per verdict cell; the word and the mark stand beside it."""
-    by_word = {boards.word(v): c for v, c in COLOURS.items()}
-    return [f"color: {by_word.get(str(v), '#1c2733')}; font-weight: 600" for v in column]
 
 
 def problem_rows(problems: list[Any]) -> pd.DataFrame:
@@ -98,10 +215,26 @@ def missing_headers(meanings: list[Meaning]) -> list[Meaning]:
     return [m for m in meanings if m.quantity is not None and m.problem is not None]
 
 
+def understood_table(meanings: list[Meaning]) -> pd.DataFrame:
+    """Headers that need nothing, and what each is read as."""
+    import pandas as pd
+
+    rows = [
+        [
+            m.header,
+            {"text": "text", "unused": "kept as a note, not computed with"}.get(m.kind)
+            or f"{'standard uncertainty of ' if m.kind == 'u' else ''}{dictionary()[str(m.quantity)].title}",
+            m.unit.display if m.unit else "",
+            (m.basis or "").replace("_", " "),
+        ]
+        for m in meanings
+        if m.problem is None
+    ]
+    return pd.DataFrame(rows, columns=["header", "read as", "unit", "basis"])
+
+
 def unit_choices(meaning: Meaning) -> list[str]:
     """Units with basis to choose from for one header."""
-    from energy.quantities import dictionary
-
     entry = dictionary()[str(meaning.quantity)]
     units = {"energy": ["kJ/100 g", "kcal/100 g", "kJ/g", "MJ/kg", "kcal/kg", "cal/g"], "density": ["g/ml", "kg/l"],
              "number": ["1"], "fraction": ["%", "g/kg"]}.get(entry.dimension, ["g/100 g", "%", "g/kg", "mg/g"])  # fmt: skip
@@ -110,75 +243,133 @@ def unit_choices(meaning: Meaning) -> list[str]:
     return [f"{u} {b}" for b in ("as is", "DM", "as analysed") for u in units]
 
 
+def sample_line(a: Assessment, sample_id: str) -> tuple[str, str]:
+    """(verdict, sentence) of the comparison a sample's screen opens with."""
+    table = _leading_rows(a)
+    row = table[table["sample_id"] == sample_id].iloc[0]
+    return str(row["verdict"]), _sentence(f"{STAGE_WORDS[row['stage']]}: {in_words(str(row['reason']))}")
+
+
+def _leading_rows(a: Assessment) -> pd.DataFrame:
+    """One verdict row per sample: the first beyond GE, else GE."""
+    table = a.verdicts
+    beyond = table[table["stage"] != "GE"].drop_duplicates("sample_id")
+    return beyond if len(beyond) else table
+
+
 def partition_table(a: Assessment, sample_id: str, route: str) -> pd.DataFrame:
-    """One route's energy partition as texts."""
+    """One route's energy partition as texts: a line per step, with its standard uncertainty."""
     import pandas as pd
 
     found = a.partition(sample_id)
     found = found[found["route"] == route]
-    digits = 1 if a.shown.scale < 0.5 else 3
+    known = np.isfinite(found["value"].to_numpy(dtype=float))
     return pd.DataFrame(
         {
             "step": found["step"].to_numpy(),
-            a.shown.unit: [_figure(v, digits) for v in found["value"]],
-            "u": [_figure(v, digits) for v in found["u"]],
-            "system": found["system"].to_numpy(),
-            "in words": found["words"].to_numpy(),
-            "source": [f"{s}; {w}" for s, w in zip(found["source"], found["locator"], strict=True)],
-            "known": found["source_status"].to_numpy(),
+            a.shown.unit: [_figure(v, _digits(a)) or "not known" for v in found["value"]],
+            "u": [_figure(v, _digits(a)) for v in found["u"]],
+            "how": [in_words(str(w)) if stage == "loss" or not k else in_words(str(s))
+                    for s, w, stage, k in zip(found["system"], found["words"], found["stage"], known, strict=True)],
+        }
+    )  # fmt: skip
+
+
+def partition_sources(a: Assessment, sample_id: str) -> pd.DataFrame:
+    """The systems behind both energy partitions, once each, with source and place."""
+    found = a.partition(sample_id).drop_duplicates("system")
+    table = found[["system", "source", "locator", "source_status"]].rename(
+        columns={"locator": "place", "source_status": "how it is known"}
+    )
+    table["system"] = [in_words(s) for s in table["system"]]
+    return table
+
+
+def figure_table(a: Assessment, sample_id: str) -> pd.DataFrame:
+    """Every figure of a sample: system, source, place and how it is known, in words."""
+    import pandas as pd
+
+    found = a.select(sample_id=sample_id)
+    return pd.DataFrame(
+        {
+            "leads": ["◂ leads" if x else "" for x in found["leading"]],
+            "stage": [STAGE_WORDS.get(s, s) for s in found["stage"]],
+            "route": found["route"].astype(str),
+            "system": [in_words(s) for s in found["system"]],
+            f"value, {a.shown.unit}": np.round(found["value"].astype(float), _digits(a)),
+            "u": np.round(found["u"].astype(float), _digits(a)),
+            "state": [STATUS_WORDS[s] for s in found["status"]],
+            "what was assumed, or is missing": [in_words(r) for r in found["reason"]],
+            "source": found["source"].astype(str),
+            "place": found["locator"].astype(str),
+            "how it is known": [SOURCE_STATUS[s] for s in found["source_status"]],
+            "id": found["system"].astype(str),
         }
     )
 
 
-def _figure(value: float, digits: int) -> str:
-    return "" if not np.isfinite(value) else f"{value:.{digits}f}"
+def given_table(a: Assessment, sample_id: str) -> pd.DataFrame:
+    """What was given for a sample, as stated, and where each standard uncertainty comes from."""
+    import pandas as pd
+
+    found = a.inputs(sample_id)
+    return pd.DataFrame(
+        {
+            "quantity": found["quantity"].astype(str),
+            "value": [f"{v:.6g} {u}".replace(" 1", "") if u == "1" else f"{v:.6g} {u}"
+                      for v, u in zip(found["value"], found["unit"], strict=True)],
+            "basis": [{"none": ""}.get(b, b.replace("_", " ")) for b in found["basis"]],
+            "u": [f"{u:.2g}" if np.isfinite(u) else "" for u in found["u"]],
+            "u is from": [U_WORDS.get(w, w) for w in found["u_from"]],
+            "mean of": [str(n) for n in found["replicates"]],
+            "remark": ["below the limit: half of it taken" if b else "" for b in found["below_limit"]],
+        }
+    )  # fmt: skip
 
 
 def parts_table(a: Assessment, sample_id: str) -> pd.DataFrame:
-    """Lines of the three parts as shown."""
+    """Lines of the three parts as shown; a part's name stands on its first line."""
     found = a.explain(sample_id)
-    digits = 1 if a.shown.scale < 0.5 else 3
-    table = found[["part", "component"]].copy()
+    first = ~found["part"].duplicated()
+    table = found[["component"]].copy()
+    table.insert(0, "part", [p if f else "" for p, f in zip(found["part"], first, strict=True)])
     table["g per 100 g"] = [_figure(v, 1) for v in found["amount"]]
-    for name, title in (("bomb", "bomb"), ("composition", "against"), ("contribution", "difference")):
-        table[f"{title}, {a.shown.unit}"] = [_figure(v, digits) for v in found[name]]
+    for name, title in (("bomb", "this"), ("composition", "against this"), ("contribution", "makes")):
+        digits = _digits(a)
+        table[f"{title}, {a.shown.unit}"] = [_figure(v, digits, name == "contribution") for v in found[name]]
     table["in words"] = found["words"]
     return table
 
 
-def parts_sentence(a: Assessment, sample_id: str) -> str:
-    """The three sums in one line, or why there are none."""
-    found = a.explain(sample_id)
-    if found.empty:
-        return "One route only: there is no difference to split."
-    sums = found.groupby("part", sort=False)["contribution"].sum()
-    digits = 1 if a.shown.scale < 0.5 else 3
-    parts = [f"{name} part {sums.get(name, 0.0):+.{digits}f}" for name in PART_COLOURS]
-    return f"difference {sums.sum():+.{digits}f} {a.shown.unit} = " + ", ".join(parts)
-
-
-def parts_chart(a: Assessment, sample_id: str) -> alt.Chart | None:
-    """The three parts as bars from zero."""
-    import altair as alt
+def parts(a: Assessment, sample_id: str) -> pd.DataFrame | None:
+    """The three parts of the leading comparison for drawing: part, value, label; None with one route only."""
     import pandas as pd
 
-    found = a.explain(sample_id)
-    if found.empty:
+    rows = _leading_rows(a)
+    row = rows[rows["sample_id"] == sample_id].iloc[0]
+    values = [float(row[f"{part}_part"]) for part in PARTS]
+    if not np.isfinite(values).all():
         return None
-    sums = found.groupby("part", sort=False)["contribution"].sum()
-    data = pd.DataFrame({"part": list(PART_COLOURS), "value": [float(sums.get(p, 0.0)) for p in PART_COLOURS]})
-    scale = alt.Scale(domain=list(PART_COLOURS), range=list(PART_COLOURS.values()))
-    base = alt.Chart(data).encode(
-        y=alt.Y("part:N", sort=None, title=None, axis=alt.Axis(labelOverlap=False, labelFontSize=13))
-    )
-    bars = base.mark_bar(size=18).encode(
-        x=alt.X("value:Q", title=f"bomb less composition, {a.shown.unit}"),
-        color=alt.Color("part:N", scale=scale, legend=None),
-        tooltip=["part", alt.Tooltip("value:Q", format="+.2f")],
-    )
-    zero = alt.Chart(pd.DataFrame({"x": [0.0]})).mark_rule(color="#1c2733").encode(x="x:Q")
-    chart: alt.Chart = (bars + zero).properties(height=alt.Step(34))
-    return chart
+    labels = [f"{part}  {_figure(v, _digits(a), True)}" for part, v in zip(PARTS, values, strict=True)]
+    return pd.DataFrame({"part": list(PARTS), "value": values, "label": labels})
+
+
+def parts_sentence(a: Assessment, sample_id: str) -> str:
+    """The three parts in one line, or why there are none."""
+    found = parts(a, sample_id)
+    if found is None:
+        return "One route only: there is no difference to split."
+    said = [f"{p} part {_figure(v, _digits(a), True)}" for p, v in zip(found["part"], found["value"], strict=True)]
+    total = _figure(float(found["value"].sum()), _digits(a), True)
+    return f"Bomb less composition {total} {a.shown.unit} = {', '.join(said)}."
+
+
+def _figure(value: float, digits: int, signed: bool = False) -> str:
+    """A number as text, '' if there is none; never a minus before zero."""
+    if not np.isfinite(value):
+        return ""
+    rounded = round(float(value), digits) + 0.0
+    return f"{rounded:+.{digits}f}" if signed and rounded else f"{rounded:.{digits}f}"
 
 
 def file_bytes(a: Assessment, ending: str) -> bytes:
@@ -187,9 +378,67 @@ def file_bytes(a: Assessment, ending: str) -> bytes:
         return save(a, Path(folder) / f"evidence{ending}")[0].read_bytes()
 
 
-def workbook(a: Assessment) -> BytesIO:
-    """The evidence workbook."""
-    return BytesIO(file_bytes(a, ".xlsx"))
+# ---- the catalogue ----------------------------------------------------------------------------------------------
+
+
+def equation_filters(table: pd.DataFrame, column: str) -> list[str]:
+    """What a column of the catalogue's table can be narrowed to."""
+    return sorted({part for cell in table[column] for part in _cells(column, cell)})
+
+
+def equation_filter(table: pd.DataFrame, wanted: dict[str, list[str]], text: str) -> pd.DataFrame:
+    """Rows that hold one of the wanted values in each column (all if none is wanted) and the text anywhere."""
+    keep = np.ones(len(table), dtype=bool)
+    for column, values in wanted.items():
+        if values:
+            keep &= np.array([bool(set(values) & set(_cells(column, cell))) for cell in table[column]], dtype=bool)
+    if text:
+        joined = table["id"] + " " + table["title"] + " " + table["source"] + " " + table["body"].fillna("")
+        keep &= joined.str.contains(text, case=False, regex=False).to_numpy()
+    return table[keep]
+
+
+def _cells(column: str, cell: object) -> list[str]:
+    return str(cell).split(", ") if column == "target" else [str(cell)]
+
+
+def equation_list(table: pd.DataFrame) -> pd.DataFrame:
+    """The catalogue's table as shown."""
+    shown = table[["title", "stage", "route", "target", "source_words", "source", "id"]].copy()
+    shown["target"] = ["every species and use" if t.count(",") > 5 else t.replace("_", " ") for t in shown["target"]]
+    return shown.rename(columns={"target": "species or use", "source_words": "how it is known"})
+
+
+def latex_line(system: System) -> str:
+    """The formula typeset, with its result's stage and unit."""
+    unit = re.sub(r"([%&#_$])", r"\\\1", system.result_unit)
+    if system.result_basis not in ("", "none"):
+        unit += {"any": "", "as_is": " as is", "dry_matter": " DM"}.get(system.result_basis, "")
+    return rf"\mathrm{{{system.stage}}} = {system.formula.latex}\quad\text{{[{unit}]}}"
+
+
+def fact_table(system: System, domain: str) -> pd.DataFrame:
+    """What is known of an entry, one fact per line."""
+    import pandas as pd
+
+    factor = system.nitrogen_factor
+    rows = [
+        ("formula as text", system.formula.text),
+        ("source", system.citation),
+        ("place in it", system.locator),
+        ("how it is known", SOURCE_STATUS[system.source_status]),
+        ("law or code of", system.body if system.law else ""),
+        ("domain", domain or "none printed"),
+        ("nitrogen to protein", "the food's own factor" if factor == "own" else f"factor {factor}"),
+        ("kJ and kcal", TWIN_WORDS[system.twin]),
+        ("spread about it", "" if system.residual_sd is None else f"residual SD {system.residual_sd:g} {system.result_unit}"),
+        ("methods it needs", "; ".join(f"{c.replace('_', ' ')}: {' or '.join(m).replace('_', ' ')}"
+                                       for c, m in system.requires_methods.items())),
+        ("not to be mixed with", in_words(", ".join(system.excludes))),
+        ("note", system.note),
+        ("id", system.id),
+    ]  # fmt: skip
+    return pd.DataFrame([row for row in rows if row[1]], columns=["fact", "value"])
 
 
 def symbol_table(system: System) -> pd.DataFrame:

@@ -1,0 +1,78 @@
+"""Colours, marks and charts. Colours are Okabe and Ito's; none speaks without its word and mark."""
+
+from __future__ import annotations
+
+from html import escape
+from typing import TYPE_CHECKING, Any
+
+from energy.report import board as boards
+
+if TYPE_CHECKING:
+    import altair as alt
+    import pandas as pd
+
+INK = "#1c2733"
+#: the grey is no colour of theirs: two verdicts say that there is nothing to judge
+COLOURS = {
+    "concordant": "#0072B2",
+    "biased": "#56B4E9",
+    "inconclusive": "#CC79A7",
+    "discordant": "#D55E00",
+    "single_route": "#5d6a75",
+    "not_computed": "#5d6a75",
+}
+PART_COLOURS = {"measurement": "#D55E00", "heats": "#E69F00", "convention": "#56B4E9"}
+
+STYLE = """<style>
+.stMainBlockContainer {padding-top: 4.2rem; padding-bottom: 2rem}
+.stMainBlockContainer h1 {font-size: 2rem; padding: 0.2rem 0}
+.stMainBlockContainer h3 {font-size: 1.25rem; padding-bottom: 0.3rem}
+.stMainBlockContainer h5 {padding: 0.1rem 0 0.5rem 0}
+[data-testid="stTable"] :is(td, th, td *, th *) {max-width: none}
+.katex-display {overflow-x: auto; overflow-y: hidden; padding: 0.3rem 0}
+</style>"""
+
+
+def verdict_styles(column: pd.Series[Any]) -> list[str]:
+    """Text colour per verdict cell; the word and the mark stand in the cell."""
+    by_word = {boards.word(v): c for v, c in COLOURS.items()}
+    return [f"color: {by_word.get(str(v), INK)}; font-weight: 600" for v in column]
+
+
+def verdict_line(verdict: str, sentence: str) -> str:
+    """A verdict with its mark, larger, and what it rests on."""
+    colour = COLOURS[verdict]
+    return (
+        f'<div style="border-left: 5px solid {colour}; padding: 0.1rem 0 0.1rem 0.8rem">'
+        f'<span style="color: {colour}; font-size: 1.3rem; font-weight: 600">{escape(boards.word(verdict))}</span>'
+        f"<br>{escape(sentence)}</div>"
+    )
+
+
+def parts_chart(parts: pd.DataFrame, unit: str) -> alt.LayerChart:
+    """The three parts as bars from zero, each with its figure in its label."""
+    import altair as alt
+
+    order = list(parts["label"])
+    axis = alt.Axis(labelFontSize=14, labelLimit=0, labelColor=INK, ticks=False, domain=False, labelPadding=10)
+    bars = (
+        alt.Chart(parts)
+        .mark_bar(size=20)
+        .encode(
+            x=alt.X(
+                "value:Q",
+                title=f"bomb less composition, {unit}",
+                axis=alt.Axis(tickCount=6, labelFontSize=12, titleFontSize=12),
+            ),
+            y=alt.Y("label:N", sort=order, title=None, axis=axis),
+            color=alt.Color(
+                "part:N",
+                scale=alt.Scale(domain=list(PART_COLOURS), range=list(PART_COLOURS.values())),
+                legend=None,
+            ),
+            tooltip=[alt.Tooltip("part:N"), alt.Tooltip("value:Q", format="+.2f")],
+        )
+    )
+    zero = alt.Chart(parts).mark_rule(color=INK).encode(x=alt.datum(0))
+    chart = alt.LayerChart(layer=[bars, zero])
+    return chart.properties(height=alt.Step(34))
