@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from energy import display, reasons, views
-from energy.catalogue import reader
+from energy.catalogue import reader, tables
 from energy.catalogue.records import SOURCE_STATUS, TARGETS, System
 from energy.compare import NOT_COMPUTED, SINGLE_ROUTE, VERDICTS, Limit, read_limit, verdict_codes
 from energy.evaluate import MISSING, Blocks, Pair, evaluate
@@ -124,11 +124,11 @@ def choose(
     """Which systems are computed and compared; defaults from targets.toml."""
     if which not in ("default", "all"):
         raise WrongUse(f"systems = '{which}' is not known.", "Use 'default' or 'all'.")
-    if target not in reader.targets():
+    if target not in tables.targets():
         raise WrongUse(
             f"No system for {target} is in this version.", "Use target='none' for the check of gross energy alone."
         )
-    default = reader.targets()[target]
+    default = tables.targets()[target]
     heats = str(default.get("gross_energy_system", "ge_heats_best"))
     laws = _laws(catalogue, target, law)
     bombs = [bomb_system] if bomb_system else [

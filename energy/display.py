@@ -42,7 +42,9 @@ def display(unit: str | None, basis: str | None, working: str) -> Display:
         raise WrongUse(f"'{unit}' is per volume.", "Choose a unit per mass; labels per 100 ml come with the density.")
     if read.basis and basis and read.basis != basis:
         raise WrongUse(f"The unit '{unit}' and basis '{basis}' disagree.", "Give one of them.")
-    return Display(read.display, read.scale, basis or read.basis or working, read.energy_family)
+    # a law prints kJ or kcal; any other unit is made from its leading sum
+    family = read.energy_family if read.energy_family in ("J", "cal") else None
+    return Display(read.display, read.scale, basis or read.basis or working, family)
 
 
 def basis_factor(samples: Samples, working: str, goal: str) -> np.ndarray | float:

@@ -8,13 +8,14 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
+from functools import cache
 from typing import Any
 
 import numpy as np
 
 from energy import algebra
 from energy.algebra import Node
-from energy.catalogue.reader import derived_rules
+from energy.catalogue.reader import derived_rules, systems
 from energy.catalogue.records import System
 from energy.evaluate import Pair
 from energy.resolve import Resolver, Signature, signatures
@@ -198,9 +199,24 @@ def _always(f: Facts) -> np.ndarray:
     return np.ones(len(f.measured), dtype=bool)
 
 
+@cache
+def heat(symbol: str) -> float:
+    """A general heat of ge_heats_best in MJ/kg: hp protein, hf fat, hc carbohydrate, hfi fibre."""
+    found = systems()["ge_heats_best"].symbols[symbol]
+    value = found.constant if found.constant is not None else found.fallback
+    if value is None:
+        raise KeyError(symbol)
+    return value * found.scale
+
+
+def needed_by_difference(gap: float) -> tuple[float, float, float]:
+    """kg/kg of moisture, fat, protein that would each alone make a gap in GE (MJ/kg), carbohydrate by difference."""
+    return gap / heat("hc"), gap / (heat("hf") - heat("hc")), gap / (heat("hp") - heat("hc"))
+
+
 def _missing_fat(f: Facts) -> np.ndarray:
-    """kg fat per kg that must sit in carbohydrate by difference instead: 39.3 - 17.4 MJ/kg are gained."""
-    return (f.measured - f.computed) / (39.3 - 17.4)
+    """kg fat per kg that must sit in carbohydrate by difference instead."""
+    return (f.measured - f.computed) / (heat("hf") - heat("hc"))
 
 
 def _powder_moisture(f: Facts) -> np.ndarray:
@@ -239,7 +255,7 @@ HYPOTHESES = (
                "the powder's residual moisture was probably left out: "
                "{amount:.1f} % of water in the powder would explain it",
                "determine the moisture of the powder that was burned, on the day of the pellets"),
-    Hypothesis("fibre_twice", 0.7, _same_measured, lambda f: f.computed - 17.4 * f.fibre,
+    Hypothesis("fibre_twice", 0.7, _same_measured, lambda f: f.computed - heat("hfi") * f.fibre,
                lambda f: f.available_given & (f.fibre > 0.005)
                & (np.isnan(f.mass_sum) | (np.abs(f.mass_sum - 1 - f.fibre) < 0.5 * f.fibre)),
                lambda f: 100 * f.fibre,
@@ -285,7 +301,7 @@ def _by_size(facts: Facts, rows: np.ndarray, cause: np.ndarray, following: np.nd
     """No hypothesis fits: what each determination would have to be wrong by (g per 100 g), largest lever first."""
     gap = facts.measured - facts.computed
     for i in np.flatnonzero(rows):
-        moisture, fat, protein = 100 * gap[i] / 17.4, 100 * gap[i] / (39.3 - 17.4), 100 * gap[i] / (23.6 - 17.4)
+        moisture, fat, protein = (100 * x for x in needed_by_difference(float(gap[i])))
         cause[i] = (
             f"nothing specific fits; alone, {abs(moisture):.1f} g of moisture (too {'high' if gap[i] > 0 else 'low'}), "
             f"{abs(fat):.1f} g of fat or {abs(protein):.1f} g of protein (too {'low' if gap[i] > 0 else 'high'}) "

@@ -8,8 +8,8 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from energy import cells, uncertainty
-from energy.catalogue.reader import food_groups
 from energy.catalogue.records import TARGETS
+from energy.catalogue.tables import food_groups
 from energy.problems import Problem, StructuralProblems
 from energy.quantities import dictionary, method_columns, normal_form
 from energy.samples import BASIS_CODE, Samples

@@ -7,10 +7,10 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from energy.catalogue import reader
+from energy.catalogue import reader, tables
 from energy.catalogue.records import SOURCE_STATUS, System
 from energy.compare import BIASED, CONCORDANT, DISCORDANT, INCONCLUSIVE, NOT_COMPUTED, SINGLE_ROUTE, VERDICTS
-from energy.display import basis_factor, quantity_values, scale_of, visible
+from energy.display import Display, basis_factor, quantity_values, scale_of, visible
 from energy.evaluate import (
     METHOD,
     MISSING,
@@ -61,7 +61,7 @@ def figure_reasons(a: Assessment, i: int) -> np.ndarray:
         if not made.computed[i]:
             found[here] = _missing_words(a.samples, resolver, system)
             continue
-        fixed = _fixed_words(resolver, system)
+        fixed = [*_fixed_words(resolver, system), *_unit_words(system, a.shown)]
         notes: list[tuple[np.ndarray, str]] = []
         for column in status.required:
             empty = np.isnan(a.samples.columns[column][here])
@@ -96,10 +96,23 @@ def _fixed_words(resolver: Resolver, system: System) -> list[str]:
     words = [_zero_sentence(quantity, then) for quantity, then in resolver.assumed(system).items()]
     if assumes_nitrogen_factor(resolver, system):
         words.append("nitrogen factor 6.25 assumed for the protein given")
-    if system.twin == "none" and system.energy_family == "cal" and system.route == "composition":
-        words.append("the source prints no kJ factor: kJ = kcal x 4.184")
+    return words
+
+
+def _unit_words(system: System, shown: Display) -> list[str]:
+    """Which figure is the source's own and which is a conversion, in the unit shown."""
+    if system.route != "composition" or system.stage == "GE":
+        return []
     if system.twin.startswith("conversion"):
-        words.append(f"second unit by conversion, 1 kcal = {system.twin.removeprefix('conversion_')} kJ")
+        return [f"second unit by conversion, 1 kcal = {system.twin.removeprefix('conversion_')} kJ"]
+    words = []
+    in_joules = shown.family == "J" or shown.unit == "MJ/kg"
+    if system.energy_family == "cal" and in_joules:
+        words.append("summed in kcal; shown by 1 kcal = 4.184 kJ, which is not the source's own")
+    if system.energy_family == "J" and shown.family == "cal":
+        words.append("summed in kJ; shown by 1 kcal = 4.184 kJ, which is not the source's own")
+    if shown.unit.startswith("Btu"):
+        words.append("shown by 1 Btu/lb = 2326 J/kg, which is not the source's own")
     return words
 
 
@@ -325,7 +338,7 @@ def _convention_words(line: dict[str, Any], family: str | None) -> str:
 
 
 def _own_factor(samples: Samples, row: int) -> float:
-    groups = reader.food_groups()
+    groups = tables.food_groups()
     if "food_group" in samples.text:
         found = groups.get(str(samples.text["food_group"][row]), {}).get("nitrogen_factor")
         if found:
@@ -398,7 +411,7 @@ def matrix_notes(samples: Samples, row: int) -> list[str]:
     form = str(samples.text["form"][row]) if "form" in samples.text else ""
     return [
         f"both routes overstate ME: {entry['words']} ({entry['source']})"
-        for entry in reader.food_matrix()
+        for entry in tables.food_matrix()
         if group in entry["food_groups"] and form in entry["forms"]
     ]
 

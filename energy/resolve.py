@@ -15,8 +15,9 @@ import numpy as np
 
 from energy import basis as bases
 from energy.algebra import Node, add, multiply, power, scale, slope, substitute
-from energy.catalogue.reader import derived_rules, food_groups, table
+from energy.catalogue.reader import derived_rules
 from energy.catalogue.records import Symbol, System
+from energy.catalogue.tables import food_groups, table
 from energy.samples import BASES, Samples
 
 ASSUMED_NITROGEN_FACTOR = 6.25

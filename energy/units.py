@@ -14,7 +14,7 @@ from typing import Any
 
 from energy.problems import UnitProblem
 
-#: grams of ethanol per ml at 20 degC (OIML R 22 tables give 789.24 kg/m3)
+#: grams of ethanol per ml at 20 degC: 789.24 kg/m3, recalled as the value of OIML R 22, not read there
 ETHANOL_DENSITY = 0.78924
 
 _BASIS_WORDS = {

@@ -257,3 +257,29 @@ def test_soluble_fibre_follows_from_the_total():
         system="us_21cfr_101_9_c"
     )
     assert found["value"].tolist() == pytest.approx([54])
+
+
+@pytest.mark.parametrize("unit", ["Btu/lb", None, "MJ/kg", "kcal/kg"])
+def test_a_law_has_its_leading_figure_in_every_unit(unit):
+    a = energy.assess(
+        Samples.from_arrays({**TEN, "gross_energy": [9.7]}), target="human", law="eu_1169_2011", unit=unit
+    )
+    lead = a.select(stage="ME")
+    assert lead.loc[lead["leading"], "system"].astype(str).str.startswith("eu_1169_2011").tolist() == [True]
+
+
+def test_btu_are_made_from_the_laws_leading_sum():
+    # 7.9 MJ/kg by the kJ factors; 2326 J/kg are one Btu/lb
+    a = energy.assess(Samples.from_arrays(TEN), target="human", law="eu_1169_2011", unit="Btu/lb")
+    found = a.select(system="eu_1169_2011").iloc[0]
+    assert found["value"] == pytest.approx(7.9e6 / 2326)
+    assert "1 Btu/lb = 2326 J/kg" in found["reason"]
+
+
+def test_a_kilocalorie_sum_shown_in_joules_says_so():
+    found = (
+        energy.assess(Samples.from_arrays(TEN), target="human", law="eu_1169_2011")
+        .select(system="eu_1169_2011_kcal")
+        .iloc[0]
+    )
+    assert "1 kcal = 4.184 kJ" in found["reason"]

@@ -123,9 +123,9 @@ def test_nut_studies_measured_less_than_computed():
     import csv
     from pathlib import Path
 
-    from energy.catalogue import reader
+    from energy.catalogue import tables
 
-    text = (Path(reader.FOLDER) / "measured_vs_computed.csv").read_text(encoding="utf-8")
+    text = (Path(tables.FOLDER) / "measured_vs_computed.csv").read_text(encoding="utf-8")
     rows = list(csv.DictReader(text.splitlines()))
     share = {
         (r["food"], r["quantity"]): float(r["measured"]) / float(r["computed"])
@@ -192,3 +192,16 @@ def test_in_kilocalories_the_partition_ends_at_the_laws_own_sum(demo):
 def test_factors_are_told_in_the_unit_shown(demo):
     words = demo[0].explain("002").query("part == 'convention'").set_index("component")["words"]
     assert "2.00 kcal/g by the composition system" in words["dietary fibre"]  # Annex XIV: fibre 2 kcal/g
+
+
+def test_what_each_determination_would_have_to_be_wrong_by():
+    """What 2 % of 17.4 MJ/kg needs, by hand from the general heats 5.65, 9.40, 4.15 kcal per g:
+
+    0.02 x 17.4 = 0.348 MJ/kg; over 17.36, over 39.33 - 17.36 and over 23.64 - 17.36 MJ/kg.
+    """
+    from energy.explain import needed_by_difference
+
+    found = needed_by_difference(0.348)
+    expected = (0.348 / 17.3636, 0.348 / (39.3296 - 17.3636), 0.348 / (23.6396 - 17.3636))
+    assert found == pytest.approx(expected, rel=1e-6)
+    assert [round(100 * x, 1) for x in found] == [2.0, 1.6, 5.5]

@@ -10,9 +10,9 @@ from pathlib import Path
 import chemicals
 import pytest
 
-from energy.catalogue import reader
+from energy.catalogue import tables
 
-TEXT = (Path(reader.FOLDER) / "component_heats.toml").read_text(encoding="utf-8")
+TEXT = (Path(tables.FOLDER) / "component_heats.toml").read_text(encoding="utf-8")
 HEATS = {h["id"]: h for h in tomllib.loads(TEXT)["component_heat"]}
 ATOMS = {"C": 12.011, "H": 1.008, "N": 14.007, "O": 15.999}  # IUPAC abridged standard atomic weights
 

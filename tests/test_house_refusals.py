@@ -2,8 +2,10 @@
 
 import pytest
 
+import energy
 from energy.catalogue import reader
 from energy.problems import CatalogueProblem
+from energy.samples import Samples
 
 EQUATION = """
 [publication]
@@ -126,3 +128,81 @@ def test_a_component_named_twice_is_refused(tmp_path):
     path.write_text(TABLE + TABLE[TABLE.index("[[factor_table.component]]") :], encoding="utf-8")
     with pytest.raises(CatalogueProblem):
         reader.with_house(path)
+
+
+def refused(tmp_path, text):
+    path = tmp_path / "house.toml"
+    path.write_text(text, encoding="utf-8")
+    with pytest.raises(CatalogueProblem) as problem:
+        reader.with_house(path)
+    return str(problem.value)
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "word"),
+    [
+        ('citation = "our own"', 'citation = ""', "source"),
+        ('locator = "sheet 1"', 'locator = " "', "source"),
+        ('locator = "sheet 1"\n', "", "locator"),
+        ('"4*P"', '"4*P + Q"', "Q"),
+        ('"crude_protein"', '"protine"', "not a quantity"),
+        ('"kcal/g as is"', '"kcal"', "unit"),
+        ('"g/g as is"', '"kJ/g"', "not of mass per mass"),
+        ('stage = "ME"', 'stage = "MX"', "stage"),
+        ('route = "composition"', 'route = "guess"', "route"),
+        ('["human"]', '["unicorn"]', "unicorn"),
+        ('"house_me"', '"eu_1169_2011"', "twice"),
+        ('source_status = "house"', 'source_status = "low"', "source_status"),
+        ('"4*P"', "\"__import__('os')\"", "not allowed"),
+        ('"4*P"', '"P*1e400"', "too large"),
+        ('"4*P"', '"9**9**9*P"', "power"),
+        ('"4*P"', '"P.real"', "not allowed"),
+        ('"4*P"', '"4*\\u0420"', "outside plain ASCII"),
+        ('"4*P"', '"' + "P+" * 1100 + 'P"', "characters"),
+        ('"4*P"', '"' + "(" * 50 + "P" + ")" * 50 + '"', "nested"),
+        ('"4*P"', '"4/0*P"', "cannot be computed"),
+        ('unit = "g/g as is"', 'unit = "stone"', "unit"),
+        ("P = {", 'Q = { quantity = "crude_fat", unit = "g/g as is" }\nP = {', "never used"),
+        ('locator = "sheet 1"', 'locator = "sheet 1"\nnitrogen_factor = "six"', "nitrogen_factor"),
+        ("[publication]", "[publication", "cannot be read"),
+        ("[publication]", "[somewhere]", "publication"),
+    ],
+)
+def test_a_broken_house_file_is_refused_clearly(tmp_path, old, new, word):
+    assert EQUATION.count(old) == 1
+    message = refused(tmp_path, EQUATION.replace(old, new))
+    assert word in message
+    assert "house.toml" in message
+
+
+def test_the_same_id_twice_in_one_house_file_is_refused(tmp_path):
+    entry = EQUATION[EQUATION.index("[[equation]]") :]
+    assert "'house_me' is there twice" in refused(tmp_path, EQUATION + entry)
+
+
+def test_a_file_that_is_not_text_is_refused(tmp_path):
+    path = tmp_path / "house.toml"
+    path.write_bytes(b"\xff\xfe\x00")
+    with pytest.raises(CatalogueProblem, match="cannot be read"):
+        reader.with_house(path)
+
+
+def test_a_house_file_that_is_not_there_is_refused(tmp_path):
+    with pytest.raises(CatalogueProblem, match="cannot be read"):
+        reader.with_house(tmp_path / "none.toml")
+
+
+def test_a_sound_house_file_is_taken(tmp_path):
+    path = tmp_path / "house.toml"
+    path.write_text(EQUATION)
+    assert "house_me" in reader.with_house(path)
+    assert "house_me" not in reader.systems()
+
+
+def test_a_house_equation_computes(tmp_path):
+    path = tmp_path / "house.toml"
+    path.write_text(EQUATION)
+    samples = Samples.from_arrays({"crude_protein": [0.1]})
+    found = energy.assess(samples, target="human", house=path, composition_system="house_me", unit="kcal/100 g").results
+    value = found.loc[found["system"] == "house_me", "value"].iloc[0]
+    assert value == pytest.approx(40)  # 4 kcal/g x 10 g

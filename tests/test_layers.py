@@ -11,7 +11,7 @@ LAYERS = [
     ["energy", "energy.problems"],
     ["energy.units"],
     ["energy.quantities", "energy.algebra", "energy.formula", "energy.basis"],
-    ["energy.catalogue", "energy.catalogue.records", "energy.catalogue.reader"],
+    ["energy.catalogue", "energy.catalogue.records", "energy.catalogue.tables", "energy.catalogue.reader"],
     ["energy.samples"],
     ["energy.tabular", "energy.cells", "energy.headers", "energy.uncertainty", "energy.gather"],
     ["energy.wide", "energy.long"],

@@ -5,7 +5,6 @@ The same reader serves the files of this package and a house file of the user's 
 
 from __future__ import annotations
 
-import csv
 import math
 import re
 import tomllib
@@ -30,12 +29,12 @@ from energy.catalogue.records import (
     System,
     weakest,
 )
+from energy.catalogue.tables import FOLDER, table
 from energy.formula import Formula, parse
 from energy.problems import CatalogueProblem, FormulaProblem, UnitProblem
 from energy.quantities import dictionary
 from energy.units import parse_unit
 
-FOLDER = Path(__file__).parent
 #: quantities that exist only by a rule of derived.toml
 DERIVED_ONLY = ("carbohydrate_all", "solids")
 #: with a factor of their own these leave a carbohydrate found by difference; fibre and acids do so by its rule
@@ -436,19 +435,6 @@ def _symbol(name: str, entry: Mapping[str, Any], result_scale: float, where: str
 
 
 @cache
-def table(file: str) -> dict[tuple[str, str], dict[str, str]]:
-    """A printed table: (slug, component) -> its row as text. `component` is empty where a table has none."""
-    with (FOLDER / file).open(encoding="utf-8", newline="") as handle:
-        return {(row["slug"], row.get("component", "")): row for row in csv.DictReader(handle)}
-
-
-@cache
-def food_groups() -> dict[str, dict[str, str]]:
-    """slug -> title and nitrogen factor (empty where the group does not fix one) of every food group."""
-    return {slug: row for (slug, _), row in table("food_groups.csv").items()}
-
-
-@cache
 def derived_rules() -> dict[str, tuple[DerivedRule, ...]]:
     """quantity -> the ways to get it, best first."""
     raw = tomllib.loads((FOLDER / "derived.toml").read_text(encoding="utf-8"))
@@ -469,13 +455,6 @@ def derived_rules() -> dict[str, tuple[DerivedRule, ...]]:
             )
         )
     return {name: tuple(found) for name, found in rules.items()}
-
-
-@cache
-def targets() -> dict[str, dict[str, Any]]:
-    """Defaults per target, with their reasons."""
-    raw = tomllib.loads((FOLDER / "targets.toml").read_text(encoding="utf-8"))
-    return {name: entry for name, entry in raw.items() if name in TARGETS}
 
 
 @cache
@@ -500,10 +479,3 @@ def _join(found: dict[str, System], more: list[System]) -> None:
         if system.id in found:
             raise CatalogueProblem(system.file, f"the id '{system.id}' is there twice.", "Choose another id.")
         found[system.id] = system
-
-
-@cache
-def food_matrix() -> tuple[dict[str, Any], ...]:
-    """Where food structure hides energy from the eater: food groups, forms, words, source."""
-    raw = tomllib.loads((FOLDER / "food_matrix.toml").read_text(encoding="utf-8"))
-    return tuple(raw["matrix"])

@@ -21,6 +21,10 @@ MARKS = {
     "not_computed": "·",
 }
 WORDS = {"single_route": "one route only", "not_computed": "not computed"}
+#: the figures of a comparison, in the order they are read
+FIGURES = (
+    "bomb", "composition", "difference", "difference_percent", "measurement_part", "heats_part", "convention_part",
+)  # fmt: skip
 CAUTIONS = (
     "This does not replace the law's text or a licensed adviser: label, allergen and medical decisions rest with them.",
     "Bomb work uses oxygen under pressure: the maker's manual, local codes and licensed people decide.",
@@ -43,15 +47,7 @@ def board(assessment: Assessment) -> pd.DataFrame:
     found.insert(0, "verdict", [word(v) for v in ge["verdict"]])
     main = rest.reindex(ge.index)
     none = np.full(len(ge), np.nan)
-    for name in (
-        "bomb",
-        "composition",
-        "difference",
-        "difference_percent",
-        "measurement_part",
-        "heats_part",
-        "convention_part",
-    ):
+    for name in FIGURES:
         found[name] = main.get(name, none)
     lacking = found["bomb"].isna() & found["composition"].isna()
     found.loc[lacking, ["bomb", "composition"]] = np.nan

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from energy import __version__
-from energy.report.board import CAUTIONS, board, counts
+from energy.report.board import CAUTIONS, FIGURES, board, counts
 from energy.report.tables import problem_table
 
 if TYPE_CHECKING:
@@ -81,15 +81,7 @@ def _sample(a: Assessment, identity: str) -> str:
 def _board(found: pd.DataFrame, a: Assessment) -> pd.DataFrame:
     """The board rounded as it is read; every digit stands in the tables of the samples and in the workbook."""
     table = found.drop(columns=["reason", "next_measurement", "stage"]).copy()
-    numbers = [
-        "bomb",
-        "composition",
-        "difference",
-        "difference_percent",
-        "measurement_part",
-        "heats_part",
-        "convention_part",
-    ]
+    numbers = list(FIGURES)
     table[numbers] = table[numbers].astype(float).round(1 if a.shown.scale < 0.5 else 3) + 0.0
     table["verdict"] = table["verdict"].str.replace(" ", "\u00a0")
     return table

@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from energy.catalogue import reader
+from energy.catalogue import reader, tables
 from energy.catalogue.records import SOURCE_STATUS, TARGETS, System
 from energy.headers import Meaning
 from energy.quantities import dictionary
@@ -51,12 +51,12 @@ def laws(target: str) -> dict[str, str]:
 
 def targets() -> dict[str, str]:
     """id -> what people read, of the species and uses this version has systems for."""
-    return {t: TARGET_WORDS.get(t, t.replace("_", " ")) for t in TARGETS if t in reader.targets()}
+    return {t: TARGET_WORDS.get(t, t.replace("_", " ")) for t in TARGETS if t in tables.targets()}
 
 
 def limit_hint(target: str) -> str:
     """The practical limit that holds when none is given."""
-    return f"{float(reader.targets()[target]['limit_act']):.0%} by default"
+    return f"{float(tables.targets()[target]['limit_act']):.0%} by default"
 
 
 @cache
