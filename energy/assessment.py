@@ -2,41 +2,24 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass, field
-from functools import cached_property, lru_cache
+from functools import cached_property
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 import numpy as np
 
 from energy import display, reasons, views
-from energy.catalogue import reader, tables
-from energy.catalogue.records import SOURCE_STATUS, TARGETS, System
-from energy.compare import NOT_COMPUTED, SINGLE_ROUTE, VERDICTS, Limit, read_limit, verdict_codes
-from energy.evaluate import MISSING, Blocks, Pair, evaluate
+from energy.catalogue import reader
+from energy.catalogue.records import TARGETS, System
+from energy.choice import Choice, Wanted, choose, choose_shipped
+from energy.compare import NOT_COMPUTED, SINGLE_ROUTE, verdict_codes
+from energy.evaluate import MISSING, Blocks, evaluate
 from energy.problems import Problem, WrongUse
 from energy.samples import Samples
 
 if TYPE_CHECKING:
     import pandas as pd
-
-MEASURED = "gross_energy_measured"
-
-
-@dataclass(frozen=True)
-class Choice:
-    """What is computed for a batch: systems in order, pairs that are compared, and the rule for the leading figure.
-
-    leading : per stage, ids in order of preference.
-    """
-
-    target: str
-    law: str | None
-    systems: tuple[System, ...]
-    pairs: tuple[Pair, ...]
-    leading: dict[str, tuple[str, ...]]
-    limit: Limit
 
 
 def assess(
@@ -62,12 +45,14 @@ def assess(
     """
     batch = samples if isinstance(samples, Samples) else _read(samples, target)
     aim = _target(batch, target)
+    wanted = Wanted(aim, bomb_system, composition_system, law, limit, systems)
+    columns = frozenset(batch.columns)
     if house is None:
         catalogue = reader.systems()
-        choice = _choose_shipped(aim, bomb_system, composition_system, law, limit, systems)
+        choice = choose_shipped(wanted, columns)
     else:
         catalogue = reader.with_house(house)
-        choice = choose(catalogue, aim, bomb_system, composition_system, law, limit, systems)
+        choice = choose(catalogue, wanted, columns)
     blocks = evaluate(batch, choice.systems, choice.pairs)
     return Assessment(batch, choice, blocks, coverage, display.display(unit, basis, blocks.basis), catalogue)
 
@@ -90,122 +75,6 @@ def _target(samples: Samples, target: str | None) -> str:
     if wanted not in TARGETS:
         raise WrongUse(f"The target '{wanted}' is not known.", f"One of: {', '.join(TARGETS)}.")
     return wanted
-
-
-def _find(catalogue: dict[str, System], identity: str, target: str, role: str) -> System:
-    if identity not in catalogue:
-        import difflib
-
-        near = difflib.get_close_matches(identity, catalogue, n=3, cutoff=0.4)
-        raise WrongUse(f"There is no {role} '{identity}'.", f"Did you mean {', '.join(near)}?" if near else
-                       "List them with: python -m energy equations.")  # fmt: skip
-    system = catalogue[identity]
-    if target not in system.targets:
-        raise WrongUse(f"'{identity}' is for {', '.join(system.targets)}, not for {target}.", "Choose another one.")
-    return system
-
-
-@lru_cache(maxsize=64)
-def _choose_shipped(
-    target: str, bomb: str | None, composition: str | None, law: str | None, limit: float | str | None, which: str
-) -> Choice:
-    return choose(reader.systems(), target, bomb, composition, law, limit, which)
-
-
-def choose(
-    catalogue: dict[str, System],
-    target: str,
-    bomb_system: str | None,
-    composition_system: str | None,
-    law: str | None,
-    limit: float | str | None,
-    which: str,
-) -> Choice:
-    """Which systems are computed and compared; defaults from targets.toml."""
-    if which not in ("default", "all"):
-        raise WrongUse(f"systems = '{which}' is not known.", "Use 'default' or 'all'.")
-    if target not in tables.targets():
-        raise WrongUse(
-            f"No system for {target} is in this version.", "Use target='none' for the check of gross energy alone."
-        )
-    default = tables.targets()[target]
-    heats = str(default.get("gross_energy_system", "ge_heats_best"))
-    laws = _laws(catalogue, target, law)
-    bombs = [bomb_system] if bomb_system else [
-        x for x in (default.get("bomb_system_with_group"), default.get("bomb_system")) if x]  # fmt: skip
-    if bomb_system:
-        _admit(_find(catalogue, bomb_system, target, "bomb system"), "bomb")
-    if composition_system:
-        _admit(_find(catalogue, composition_system, target, "composition system"), "composition")
-    against = [composition_system] if composition_system else list(laws)
-    beside = [b for b in default.get("beside", ()) if b not in against]
-    if not against and default.get("composition_system"):
-        against = [str(default["composition_system"])]
-        beside = [b for b in beside if b not in against]
-    pairs = [Pair("GE", MEASURED, heats, heats)]
-    pairs += [Pair(catalogue[c].stage, b, c, heats) for c in (*against, *beside) for b in bombs
-              if catalogue[c].route == "composition"]  # fmt: skip
-    ids = [MEASURED, heats, *bombs, *_with_twins(catalogue, against), *beside]
-    if law in catalogue:  # a law that lets a bomb value stand shows that value too
-        ids += [s.id for s in catalogue.values() if s.law and s.route == "bomb" and s.body == catalogue[law].body]
-    if which == "all":
-        ids += [s.id for s in catalogue.values() if target in s.targets]
-    chosen = tuple(catalogue[i] for i in dict.fromkeys(ids))
-    return Choice(
-        target=target,
-        law=law,
-        systems=chosen,
-        pairs=tuple(pairs),
-        leading=_leading(chosen, against, bombs, bool(law or composition_system)),
-        limit=read_limit(limit) if limit is not None else _default_limit(default),
-    )
-
-
-def _laws(catalogue: dict[str, System], target: str, law: str | None) -> list[str]:
-    laws = [s.id for s in catalogue.values() if s.law and target in s.targets and s.twin_of is None]
-    if law is None:
-        return []
-    if law == "all":
-        return [x for x in laws if catalogue[x].route == "composition"]
-    system = _find(catalogue, law, target, "law")
-    if not system.law:
-        raise WrongUse(f"'{law}' is not a law or code.", f"One of: {', '.join(laws)}.")
-    return [law]
-
-
-def _admit(system: System, route: str) -> None:
-    if system.route != route or system.stage == "GE":
-        raise WrongUse(f"'{system.id}' is no {route} system: it gives {system.stage} on the {system.route} route.",
-                       f"Choose one of the {route} route: python -m energy equations.")  # fmt: skip
-
-
-def _with_twins(catalogue: dict[str, System], ids: Sequence[str]) -> list[str]:
-    found: list[str] = []
-    for identity in ids:
-        found.append(identity)
-        twin = catalogue[identity].twin_id
-        if twin:
-            found.append(twin)
-    return found
-
-
-def _leading(
-    chosen: Sequence[System], against: Sequence[str], bombs: Sequence[str], law: bool
-) -> dict[str, tuple[str, ...]]:
-    """GE: the measured one. ME: what the chosen law computes if a law was chosen, else the bomb route."""
-    first = [*against, *bombs] if law else [*bombs, *against]
-    order = [MEASURED, *first, *(s.id for s in chosen if s.twin_of is None)]
-    found: dict[str, list[str]] = {}
-    stages = {s.id: s.stage for s in chosen}
-    for identity in dict.fromkeys(order):
-        if identity in stages:
-            found.setdefault(stages[identity], []).append(identity)
-    return {stage: tuple(ids) for stage, ids in found.items()}
-
-
-def _default_limit(default: dict[str, Any]) -> Limit:
-    floor = float(default.get("limit_floor_kJ_per_100g", 0.0)) * 0.01
-    return Limit(float(default["limit_act"]), floor, float(default["limit_look"]), str(default["reason"]))
 
 
 @dataclass
@@ -373,4 +242,4 @@ def demo_paths() -> list[Path]:
     raise WrongUse("The demo tables are not there.", "Install the package again.")
 
 
-__all__ = ["SOURCE_STATUS", "VERDICTS", "Assessment", "Choice", "assess", "choose", "demo_paths", "equations"]
+__all__ = ["Assessment", "assess", "demo_paths", "equations"]

@@ -249,17 +249,17 @@ def _system_status(
 
 def is_listed(system: System, quantity: str) -> bool:
     """True where a quantity counted as zero must be told: the system, or a rule it rests on, says so."""
-    direct = [s.absent for s in system.symbols.values() if s.quantity == quantity]
+    direct = [s.absent for s in system.inputs.values() if s.quantity == quantity]
     if direct:
         return "zero_and_listed" in direct
     if quantity == "nitrogen_factor":
         return True
-    used = {s.quantity for s in system.symbols.values()}
+    used = {s.quantity for s in system.inputs.values()}
     return any(rule.optional.get(quantity) for name in used if name for rule in derived_rules().get(name, ()))
 
 
 def _amount_of(resolver: Resolver, system: System, row: str) -> Node | None:
-    for symbol in system.symbols.values():
+    for symbol in system.inputs.values():
         if symbol.quantity and (symbol.quantity == ROW_AMOUNT.get(row) or row in symbol.quantity):
             return resolver.quantity(symbol.quantity, system.nitrogen_factor, filled=symbol.absent != "missing_input")
     return None
@@ -267,10 +267,10 @@ def _amount_of(resolver: Resolver, system: System, row: str) -> Node | None:
 
 def assumes_nitrogen_factor(resolver: Resolver, system: System) -> bool:
     """True where protein had to be turned into nitrogen, or back, with a factor nobody stated."""
-    if "nitrogen_factor" in resolver.columns:
+    if "nitrogen_factor" in resolver.columns or system.nitrogen_factor == "feed":
         return False
     uses = any(s.quantity in ("crude_protein", "carbohydrate_all", "carbohydrate_by_difference", "nitrogen")
-               for s in system.symbols.values())  # fmt: skip
+               for s in system.inputs.values())  # fmt: skip
     as_protein = resolver.choices.get("nitrogen", -1) != 0
     if not uses:
         return False

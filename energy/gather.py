@@ -22,6 +22,9 @@ METHOD_WORDS = {
     "karl fischer": "karl_fischer", "oven drying": "oven", "freeze drying": "freeze_drying", "vacuum oven": "vacuum",
 }  # fmt: skip
 
+#: units in which problems tell a value
+UNIT_SHOWN = {"energy": "MJ/kg", "density": "g/ml", "mass": "kg", "heat": "MJ", "gas_yield": "ml/g"}
+
 
 @dataclass
 class Gathered:
@@ -115,9 +118,9 @@ class Table:
             entry = dictionary()[quantity]
             low, high = entry.range
             scale = 100 if entry.dimension in ("mass_fraction", "fraction") else 1
-            unit = {"energy": "MJ/kg", "density": "g/ml"}.get(entry.dimension, "%" if scale == 100 else "")
+            unit = UNIT_SHOWN.get(entry.dimension, "%" if scale == 100 else "")
             with np.errstate(invalid="ignore"):
-                impossible = (values < 0) | (
+                impossible = ((values < 0) & (low >= 0)) | (
                     (values > 1.0000001) if scale == 100 and high <= 1 else np.zeros(len(values), dtype=bool)
                 )
                 odd = ~impossible & ((values < low) | (values > high))

@@ -104,9 +104,12 @@ def read_header(header: str, where: str, units: dict[str, str], basis: str | Non
                        problem=_problem(header, where, what, found.cure, "unit"))  # fmt: skip
     stated = entry.basis == "stated"
     if not stated and unit.basis not in (None, entry.basis):
-        meant = {"none": "no basis", "as_is": "the material as it is", "as_analysed": "the powder as analysed"}[
-            entry.basis
-        ]
+        meant = {
+            "none": "no basis",
+            "as_is": "the material as it is",
+            "as_analysed": "the powder as analysed",
+            "dry_matter": "dry matter",
+        }[entry.basis]
         what = f"{entry.title} is a figure of {meant}; on '{(unit.basis or '').replace('_', ' ')}' it would mean something else."
         cure = f"Give '{name} [{unit.display}]', or leave the column out."
         return Meaning(header, kind, quantity, replicate, problem=_problem(header, where, what, cure, "name"))

@@ -1,6 +1,7 @@
 """The dictionary of quantities, read from quantities.toml once.
 
-Internal units: mass fractions and other fractions as kg/kg, energies as MJ/kg, density as g/ml.
+Internal units: mass fractions and other fractions as kg/kg, energies as MJ/kg, density as g/ml, amounts of a trial as
+kg and MJ, gas production as ml/g.
 """
 
 from __future__ import annotations
@@ -31,6 +32,9 @@ DISPLAY_SCALE = {
     "energy": 1.0,
     "density": 1.0,
     "number": 1.0,
+    "mass": 1.0,
+    "heat": 1.0,
+    "gas_yield": 1.0,
 }
 
 
@@ -38,7 +42,7 @@ DISPLAY_SCALE = {
 class Quantity:
     """One entry of the dictionary.
 
-    dimension : mass_fraction, fraction, energy (per mass), density or number.
+    dimension : mass_fraction, fraction, energy (per mass), density, number, mass, heat or gas_yield.
     basis : "stated" (the table must say it) or the one the quantity has by its meaning.
     range : plausible bounds in internal units. default_u : (absolute, relative) in internal units.
     """
@@ -69,13 +73,17 @@ def normal_form(text: str) -> str:
 def dictionary() -> dict[str, Quantity]:
     """name -> Quantity, in the order of the file."""
     raw = tomllib.loads(Path(__file__).with_suffix(".toml").read_text(encoding="utf-8"))
-    return {name: _quantity(name, entry) for name, entry in raw.items()}
+    shared = raw.pop("_default_u")
+    return {name: _quantity(name, entry, shared) for name, entry in raw.items()}
 
 
-def _quantity(name: str, entry: dict[str, Any]) -> Quantity:
+def _quantity(name: str, entry: dict[str, Any], shared: dict[str, Any]) -> Quantity:
     scale = DISPLAY_SCALE[entry["dimension"]]
     low, high = entry["range"]
     default = entry.get("default_u")
+    source, status = entry.get("default_u_source", ""), entry.get("default_u_status", "")
+    if isinstance(default, str):
+        default, source, status = (shared[default][key] for key in ("value", "source", "status"))
     return Quantity(
         name=name,
         title=entry["title"],
@@ -88,8 +96,8 @@ def _quantity(name: str, entry: dict[str, Any]) -> Quantity:
         method_column=entry.get("method_column"),
         methods=tuple(entry.get("methods", ())),
         default_u=(default[0] * scale, default[1]) if default else None,
-        default_u_source=entry.get("default_u_source", ""),
-        default_u_status=entry.get("default_u_status", ""),
+        default_u_source=source,
+        default_u_status=status,
         note=entry.get("note", ""),
         header_implies=dict(entry.get("header_implies", {})),
     )

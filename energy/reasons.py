@@ -117,7 +117,7 @@ def _unit_words(system: System, shown: Display) -> list[str]:
 
 
 def _zero_words(system: System, quantity: str) -> str:
-    for symbol in system.symbols.values():
+    for symbol in system.inputs.values():
         if symbol.quantity == quantity:
             if symbol.absent == "zero":
                 return ""
@@ -140,8 +140,11 @@ def _missing_words(samples: Samples, resolver: Resolver, system: System) -> str:
         return "needs a food group of the table; none, or an unknown one, is given"
     lacking = [
         quantity_title(s.quantity)
-        for s in system.symbols.values()
-        if s.quantity and s.absent == "missing_input" and resolver.symbol(s, system) is None
+        for s in system.inputs.values()
+        if s.quantity
+        and s.name in system.formula.symbols
+        and s.absent == "missing_input"
+        and resolver.symbol(s, system) is None
     ]
     if not lacking:
         return "cannot be computed from what is given"

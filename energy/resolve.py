@@ -55,12 +55,18 @@ def rule_choices(samples: Samples) -> dict[str, np.ndarray]:
             return np.logical_or.reduce([measured.get(q, no) for q in word[4:].split(",")])
         if word == "crude_protein":
             return protein
+        if word == "solids":
+            if working_basis(samples, choices) == "dry_matter":
+                return np.ones(n, dtype=bool)
+            word = "dry_matter"
         return choices[word] >= 0 if word in choices else measured.get(word, no)
 
     for quantity, rules in derived_rules().items():
         choice = np.full(n, -1, dtype=np.int8)
         for number in range(len(rules), 0, -1):
             rule = rules[number - 1]
+            if not rule.given <= measured.keys():
+                continue  # a column it needs is not in the table at all
             fits = np.ones(n, dtype=bool)
             for word in rule.requires:
                 fits &= measured.get(word, no) if word in rule.given else has(word)
@@ -168,8 +174,15 @@ class Resolver:
     def _dry(self, basis: str) -> Node | None:
         dry = self.quantity("dry_matter")
         residual = "residual_moisture" if "residual_moisture" in self.columns else None
-        ash = "ash" if self.stated.get("ash") == "dry_matter" else None
+        ash = self._dry_ash(dry, residual) if basis == "organic_matter" else None
         return bases.dry_part(basis, dry, residual, ash)
+
+    def _dry_ash(self, dry: Node | None, residual: Node | None) -> Node | None:
+        """Ash per kg of dry matter, from whatever basis it was stated on."""
+        stated = self.stated.get("ash")
+        if "ash" not in self.columns or stated in (None, "organic_matter"):
+            return None
+        return bases.convert("ash", bases.dry_part(str(stated), dry, residual, None), 1.0)
 
     def measured(self, name: str, filled: bool = False) -> Node | None:
         """A measured column on the working basis; filled: zero where nothing was given."""
@@ -211,6 +224,10 @@ class Resolver:
         given_as_protein = self.choices.get("nitrogen", -1) != 0
         if nitrogen is None:
             return None
+        if factor == "feed":  # crude protein of a feed is N x 6.25 by definition; given as such, it needs no factor
+            if given_as_protein and "nitrogen_factor" not in self.columns:
+                return self.measured("crude_protein")
+            factor = ASSUMED_NITROGEN_FACTOR
         if factor != "own":
             return multiply(nitrogen, float(factor))
         if self.signature.group == 1:
@@ -256,12 +273,16 @@ class Resolver:
         node = self.quantity(symbol.quantity, system.nitrogen_factor, filled=symbol.absent != "missing_input")
         if node is None:
             return None
-        node = self._taken_out(node, symbol.quantity, system)
+        return self._in_paper_units(self._taken_out(node, symbol.quantity, system), symbol, system)
+
+    def _in_paper_units(self, node: Node, symbol: Symbol, system: System) -> Node | None:
+        """A quantity on the working basis, in the unit and on the basis of a formula's symbol."""
         working = self.signature.working
         if symbol.basis not in (None, "any", working) and not system.homogeneous:
-            node = bases.convert(node, self._dry(working), self._dry(str(symbol.basis)))
-            if node is None:
+            found = bases.convert(node, self._dry(working), self._dry(str(symbol.basis)))
+            if found is None:
                 return None
+            node = found
         return multiply(1.0 / symbol.scale, node)
 
     def _taken_out(self, node: Node, quantity: str, system: System) -> Node:
@@ -278,7 +299,7 @@ class Resolver:
     def assumed(self, system: System) -> dict[str, str]:
         """Quantities a system counts as zero because their column is not there -> where they then count."""
         found: dict[str, str] = {}
-        for symbol in system.symbols.values():
+        for symbol in system.inputs.values():
             if symbol.quantity is None:
                 continue
             if symbol.absent == "zero_and_listed" and self._gone(symbol.quantity):
@@ -300,17 +321,22 @@ class Resolver:
         gross_energy : what to put in place of the measured one, in MJ/kg; "heats" for the system's own heats.
         """
         tree = system.formula.node
+        needed = set(system.formula.symbols)
+        if gross_energy == "heats":
+            if system.heats is None:
+                return None
+            needed |= system.heats.symbols
         values: dict[str, Node] = {}
-        for name, symbol in system.symbols.items():
-            if symbol.quantity == "gross_energy" and gross_energy is not None:
-                if gross_energy == "heats":
-                    if system.heats is None:
-                        return None
-                    tree = substitute(tree, {name: system.heats.node})
-                    continue
-                values[name] = multiply(1.0 / symbol.scale, gross_energy)
+        for name, symbol in system.inputs.items():
+            if name not in needed:
                 continue
-            node = self.symbol(symbol, system)
+            if symbol.quantity == "gross_energy" and gross_energy == "heats" and system.heats is not None:
+                tree = substitute(tree, {name: system.heats.node})
+                continue
+            if symbol.quantity == "gross_energy" and gross_energy is not None:
+                node = self._in_paper_units(gross_energy, symbol, system)
+            else:
+                node = self.symbol(symbol, system)
             if node is None:
                 return None
             values[name] = node
@@ -321,14 +347,14 @@ class Resolver:
         if system.heats is None:
             return None
         values: dict[str, Node] = {}
-        for name, symbol in system.symbols.items():
+        for name, symbol in system.inputs.items():
             if name not in system.heats.symbols:
                 continue
             node = self.symbol(symbol, system)
             if node is None:
                 return None
             values[name] = node
-        scale = next(s.scale for s in system.symbols.values() if s.quantity == "gross_energy")
+        scale = next(s.scale for s in system.inputs.values() if s.quantity == "gross_energy")
         return self._result(multiply(scale, substitute(system.heats.node, values)), system)
 
     def _result(self, node: Node, system: System) -> Node | None:
@@ -339,13 +365,13 @@ class Resolver:
     def model_variance(self, system: System) -> Node:
         """Variance of the result from the uncertainty of the published factors or heats themselves."""
         values: dict[str, Node] = {}
-        for name, symbol in system.symbols.items():
+        for name, symbol in system.inputs.items():
             node = self.symbol(symbol, system)
             if node is None:
                 return 0.0
             values[name] = node
         terms: list[Node] = []
-        for name, symbol in system.symbols.items():
+        for name, symbol in system.inputs.items():
             if symbol.quantity is not None or not (symbol.u or symbol.fallback_u):
                 continue
             effect = multiply(system.result_scale, substitute(slope(system.formula.node, name), values))

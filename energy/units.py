@@ -34,8 +34,22 @@ _ENERGY_SPELLINGS = {"kj": "kJ", "mj": "MJ", "KJ": "kJ", "Kcal": "kcal", "KCAL":
                      "cal_it": "cal_IT", "calIT": "cal_IT", "kcal_it": "kcal_IT", "j": "J", "mcal": None}  # fmt: skip
 _MASS = {"mg": 1e-6, "g": 1e-3, "kg": 1.0, "t": 1e3, "oz": 28.349523125e-3, "lb": 0.45359237}
 _VOLUME = {"ml": 1.0, "mL": 1.0, "l": 1e3, "L": 1e3, "dl": 100.0}  # ml
-_PLAIN = {"%": 0.01, "% (m/m)": 0.01, "% m/m": 0.01, "% w/w": 0.01, "percent": 0.01, "fraction": 1.0, "ppm": 1e-6}
+#: ml of gas per mg of feed, as the Hohenheim gas test states it
+_GAS = {"ml/200 mg": 1 / 200e-3, "ml/g": 1.0, "ml/200mg": 1 / 200e-3}
+_PLAIN = {
+    "%": 0.01,
+    "% (m/m)": 0.01,
+    "% m/m": 0.01,
+    "% w/w": 0.01,
+    "percent": 0.01,
+    "fraction": 1.0,
+    "ppm": 1e-6,
+    "ratio": 1.0,
+}
 _VOLUME_PERCENT = ("% vol", "% v/v", "vol%", "%vol", "% (v/v)", "vol %")
+#: what a share is a share of, and the period of an amount: said for people, of no weight in the number
+_OF = (" of GE", " of DE", " of ME", " of OM", " of N", " BW")
+_PERIODS = ("/d", "/day", "/ d", " per day")
 _CURE = "Write for example 'kJ/100 g as is', 'MJ/kg DM', 'g/100 g as is', '% DM', 'g/kg DM'."
 
 
@@ -43,8 +57,9 @@ _CURE = "Write for example 'kJ/100 g as is', 'MJ/kg DM', 'g/100 g as is', '% DM'
 class Unit:
     """A unit read from text: internal value = value * scale (per_volume: and over the density in g/ml).
 
-    dimension : energy (per mass), mass_fraction, fraction, volume_fraction, density or number. basis : one of the
-    four bases, None when the text does not say. energy_family : "J", "cal" or "Btu" for energies.
+    dimension : energy (per mass), mass_fraction, fraction, volume_fraction, density, number, mass (an amount or an
+    amount per period, internally kg), heat (MJ) or gas_yield (ml per g). basis : one of the four bases, None when the
+    text does not say. energy_family : "J", "cal" or "Btu" for energies.
     """
 
     text: str
@@ -91,7 +106,8 @@ def _fits(found: str, wanted: str) -> bool:
 
 def _words(dimension: str) -> str:
     return {"energy": "energy per mass", "mass_fraction": "mass per mass", "fraction": "mass per mass",
-            "volume_fraction": "volume per volume", "density": "mass per volume", "number": "a plain number"}[dimension]  # fmt: skip
+            "volume_fraction": "volume per volume", "density": "mass per volume", "number": "a plain number",
+            "mass": "mass", "heat": "energy", "gas_yield": "gas per mass"}[dimension]  # fmt: skip
 
 
 def _split_basis(text: str) -> tuple[str, str | None]:
@@ -99,15 +115,36 @@ def _split_basis(text: str) -> tuple[str, str | None]:
     for word in sorted(_BASIS_WORDS, key=len, reverse=True):
         if lowered == word:
             return "", _BASIS_WORDS[word]
-        for ending in (f" {word}", f" ({word})", f" in {word}", f" of {word}"):
+        for ending in (f" of {word}", f" in {word}", f" ({word})", f" {word}"):
             if lowered.endswith(ending):
                 return text[: -len(ending)].rstrip(" ,"), _BASIS_WORDS[word]
     return text, None
 
 
+def _amount(text: str, bare: str, dimension: str) -> Unit | None:
+    """An amount that is not per mass of feed: of a trial, a period or an animal."""
+    if dimension == "gas_yield" and bare in _GAS:
+        return Unit(text, "gas_yield", _GAS[bare], display=bare)
+    if dimension not in ("mass", "heat"):
+        return None
+    plain = next((bare[: -len(p)] for p in _PERIODS if bare.endswith(p)), bare)
+    if dimension == "mass" and plain in _MASS:
+        return Unit(text, "mass", _MASS[plain], display=bare)
+    if dimension == "heat" and plain in _ENERGY:
+        name, family = _ENERGY[plain]
+        return Unit(text, "heat", _megajoule(name), energy_family=family, display=bare)
+    return None
+
+
 def _read(text: str, bare: str, dimension: str | None) -> Unit:
     if bare in ("", "1", "-") and dimension == "number":
         return Unit(text, "number", 1.0, display="1")
+    if dimension in ("mass", "heat", "gas_yield"):
+        amount = _amount(text, bare, dimension)
+        if amount is not None:
+            return amount
+    if dimension in ("fraction", "mass_fraction"):
+        bare = next((bare[: -len(word)] for word in _OF if bare.endswith(word)), bare)
     if bare.lower() in _VOLUME_PERCENT:
         return Unit(text, "volume_fraction", 0.01 * ETHANOL_DENSITY, per_volume=True, display="% vol")
     if bare in _PLAIN:

@@ -11,6 +11,7 @@ from energy.catalogue.records import SOURCE_STATUS, System
 from energy.compare import VERDICTS
 from energy.display import basis_factor, scale_of, visible
 from energy.evaluate import STATUS
+from energy.gather import UNIT_SHOWN
 from energy.problems import WrongUse
 from energy.quantities import DISPLAY_SCALE, dictionary
 from energy.samples import BASES, U_SOURCES
@@ -63,10 +64,11 @@ def results(
         if not visible(s, a.shown):
             continue
         count += 1
-        k = scale_of(s, a.shown)
+        own = own_unit(s)
+        k = 1.0 / s.result_scale if own else scale_of(s, a.shown) * factor
         for name, values in (
-            ("value", a.blocks.value[i, rows] * (factor * k)),
-            ("u", a.blocks.u[i, rows] * (factor * k)),
+            ("value", a.blocks.value[i, rows] * k),
+            ("u", a.blocks.u[i, rows] * k),
             ("leading", leading_shown(a, i)[rows]),
             ("status", np.array(STATUS, dtype=object)[a.blocks.status[i, rows]]),
             ("reason", reasons.figure_reasons(a, i)[rows]),
@@ -74,7 +76,7 @@ def results(
             pieces[name].append(values)
         for name, text in (
             ("stage", s.stage), ("route", s.route), ("system", s.id), ("source", s.citation), ("locator", s.locator),
-            ("source_status", s.source_status),
+            ("source_status", s.source_status), ("unit", own or a.shown.unit), ("basis", "" if own else a.shown.basis),
         ):  # fmt: skip
             pieces[name].append(text)
     table: dict[str, Any] = {}
@@ -82,9 +84,9 @@ def results(
     for name in RESULT_COLUMNS:
         if name == "sample_id":
             table[name] = np.tile(ids, count)
-        elif name in ("target", "unit", "basis"):
-            table[name] = {"target": a.target, "unit": a.shown.unit, "basis": a.shown.basis}[name]
-        elif name in ("stage", "route", "system", "source", "locator", "source_status"):
+        elif name == "target":
+            table[name] = a.target
+        elif name in ("stage", "route", "system", "unit", "basis", "source", "locator", "source_status"):
             kinds = list(dict.fromkeys(pieces[name]))
             codes = np.repeat([kinds.index(x) for x in pieces[name]], n)
             table[name] = pd.Categorical(np.array(kinds, dtype=object)[codes], categories=kinds)
@@ -95,6 +97,13 @@ def results(
         order = np.arange(n * count).reshape(count, n).T.ravel()
         frame = frame.iloc[order].reset_index(drop=True)
     return frame
+
+
+def own_unit(s: System) -> str:
+    """The unit of a figure that is no energy per mass (a digestibility, a ratio, an amount); '' for energies."""
+    if s.stage not in ("digestibility", "other") or s.energy_family:
+        return ""
+    return s.result_unit
 
 
 def leading_shown(a: Assessment, i: int) -> np.ndarray:
@@ -229,9 +238,7 @@ def inputs(a: Assessment, sample_id: str | None = None) -> pd.DataFrame:
         here = rows[~np.isnan(values[rows])]
         entry = dictionary()[name]
         scale = 1 / DISPLAY_SCALE[entry.dimension]
-        unit = {"mass_fraction": "g/100 g", "fraction": "%", "energy": "MJ/kg", "density": "g/ml"}.get(
-            entry.dimension, "1"
-        )
+        unit = {"mass_fraction": "g/100 g", "fraction": "%", **UNIT_SHOWN}.get(entry.dimension, "1")
         basis = s.basis.get(name)
         pieces.append(
             pd.DataFrame(

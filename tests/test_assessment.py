@@ -106,7 +106,7 @@ def test_wide_is_a_view_of_the_block(demo):
     [
         ({"target": "unicorn"}, "unicorn"),
         ({}, "for whom"),
-        ({"target": "dog"}, "No system for dog"),
+        ({"target": "dog", "law": "eu_1169_2011"}, "not for dog"),
         ({"target": "human", "law": "eu_1169"}, "eu_1169_2011"),
         ({"target": "human", "law": "miller_payne_1959"}, "not a law"),
         ({"target": "human", "bomb_system": "eu_1169_2011"}, "no bomb system"),

@@ -19,8 +19,20 @@ PRINTED = list(
 )
 
 
+def feed_figure(system, inputs, unit, text=None, units=None):
+    """The figure of a feed system for one sample, from a table as a user would give it; unit "" for a share."""
+    row = {"sample_id": "check", **(text or {}), **{f"{q} [{units[q]}]": v for q, v in inputs.items()}}
+    target = next(t for t in SYSTEMS[system].targets if t != "human")
+    samples = energy.read_samples(pd.DataFrame([row]), target=target)
+    shown = unit if "/" in unit else None
+    found = energy.assess(samples, unit=shown, systems="all").results
+    return found[found["system"] == system].iloc[0]
+
+
 def figure(system, inputs, unit, text=None, units=None):
     """The figure of one system for one sample, from a table as a user would give it."""
+    if "human" not in SYSTEMS[system].targets or (units and set(units) == set(inputs)):
+        return feed_figure(system, inputs, unit, text, units)
     row = {"sample_id": "check", **(text or {})}
     for name, value in inputs.items():
         known = dictionary()[name]

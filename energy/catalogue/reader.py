@@ -8,13 +8,15 @@ from __future__ import annotations
 import math
 import re
 import tomllib
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from functools import cache
 from pathlib import Path
 from typing import Any
 
+from energy.catalogue.chains import compose, read_tolerance
 from energy.catalogue.records import (
     ABSENT,
+    KINDS,
     ROUTES,
     SOURCE_STATUS,
     STAGES,
@@ -39,35 +41,60 @@ from energy.units import parse_unit
 DERIVED_ONLY = ("carbohydrate_all", "solids")
 #: with a factor of their own these leave a carbohydrate found by difference; fibre and acids do so by its rule
 TAKEN_OUT = ("glycerol", "tagatose", "polydextrose", "unavailable_carbohydrate")
-NOT_SYSTEMS = ("derived", "targets", "component_heats", "food_matrix", "measured_vs_computed")
+NOT_SYSTEMS = (
+    "derived", "targets", "component_heats", "food_matrix", "measured_vs_computed", "silage_dry_matter",
+)  # fmt: skip
+
+
+def _raw(path: Path) -> dict[str, Any]:
+    try:
+        return tomllib.loads(path.read_text(encoding="utf-8"))
+    except (OSError, UnicodeDecodeError, tomllib.TOMLDecodeError, RecursionError) as error:
+        raise CatalogueProblem(path.name, f"it cannot be read ({error}).", "Mend the TOML.") from None
+
+
+def _publication(raw: Mapping[str, Any], path: Path) -> Publication:
+    about = _need(raw, "publication", dict, path.name)
+    return Publication(
+        key=str(about.get("key", path.stem)),
+        citation=str(_need(about, "citation", str, f"{path.name}, publication")),
+        note=str(about.get("note", "")),
+    )
+
+
+def _entries(raw: Mapping[str, Any], kind: str, path: Path, read: Callable[[Any], list[System]]) -> list[System]:
+    entries = raw.get(kind, [])
+    if not isinstance(entries, list):
+        raise CatalogueProblem(path.name, f"'{kind}' is one table.", f"Write it as [[{kind}]].")
+    systems: list[System] = []
+    for entry in entries:
+        try:
+            systems.extend(read(entry))
+        except (KeyError, TypeError, ValueError, AttributeError, OSError) as error:
+            name = entry.get("id", "?") if isinstance(entry, dict) else "?"
+            what = f"something in it is missing or of the wrong kind ({type(error).__name__}: {error})."
+            cure = "Compare it with an entry of the same kind."
+            raise CatalogueProblem(f"{path.name}, {name}", what, cure) from None
+    return systems
 
 
 def read_file(path: Path) -> list[System]:
-    """Every system of one catalogue file. Raises CatalogueProblem with the place and the cure."""
-    where = path.name
-    try:
-        raw = tomllib.loads(path.read_text(encoding="utf-8"))
-    except (OSError, UnicodeDecodeError, tomllib.TOMLDecodeError, RecursionError) as error:
-        raise CatalogueProblem(where, f"it cannot be read ({error}).", "Mend the TOML.") from None
-    about = _need(raw, "publication", dict, where)
-    publication = Publication(
-        key=str(about.get("key", path.stem)),
-        citation=str(_need(about, "citation", str, f"{where}, publication")),
-        note=str(about.get("note", "")),
-    )
-    systems: list[System] = []
-    for kind, read in (("factor_table", _factor_table), ("equation", _equation)):
-        entries = raw.get(kind, [])
-        if not isinstance(entries, list):
-            raise CatalogueProblem(where, f"'{kind}' is one table.", f"Write it as [[{kind}]].")
-        for entry in entries:
-            try:
-                systems.extend(read(entry, publication, path))
-            except (KeyError, TypeError, ValueError, AttributeError, OSError) as error:
-                name = entry.get("id", "?") if isinstance(entry, dict) else "?"
-                what = f"something in it is missing or of the wrong kind ({type(error).__name__}: {error})."
-                raise CatalogueProblem(f"{where}, {name}", what, "Compare it with an entry of the same kind.") from None
-    return systems
+    """Every factor table and equation of one file. Raises CatalogueProblem with the place and the cure."""
+    raw = _raw(path)
+    publication = _publication(raw, path)
+    tables = _entries(raw, "factor_table", path, lambda entry: _factor_table(entry, publication, path))
+    return tables + _entries(raw, "equation", path, lambda entry: _equation(entry, publication, path))
+
+
+def read_chains(path: Path, found: Mapping[str, System]) -> list[System]:
+    """The chains of one file: entries put one into the other. found : the entries they are made of."""
+    raw = _raw(path)
+    publication = _publication(raw, path)
+
+    def read(entry: Mapping[str, Any]) -> list[System]:
+        return [compose(entry, _common(entry, publication, path), found)]
+
+    return _entries(raw, "chain", path, read)
 
 
 def _need(entry: Mapping[str, Any], key: str, kind: type, where: str) -> Any:
@@ -126,6 +153,8 @@ def _common(entry: Mapping[str, Any], publication: Publication, path: Path) -> d
         )
     where = f"{path.name}, {identity}"
     targets = tuple(_need(entry, "target", list, where))
+    if targets == ("any",):
+        targets = TARGETS
     for target in targets:
         if target not in TARGETS:
             raise CatalogueProblem(where, f"target '{target}' is not known.", f"One of: {', '.join(TARGETS)}.")
@@ -134,19 +163,19 @@ def _common(entry: Mapping[str, Any], publication: Publication, path: Path) -> d
     if not publication.citation.strip() or not locator.strip():
         raise CatalogueProblem(where, "a number without its place in a source.", "Give citation and locator.")
     nitrogen = entry.get("nitrogen_factor", "own")
-    if nitrogen != "own" and not 4 <= _number(nitrogen, "nitrogen_factor", where) <= 7:
-        raise CatalogueProblem(where, f"nitrogen_factor {nitrogen} is not plausible.", "From 4 to 7, or 'own'.")
+    if nitrogen not in ("own", "feed") and not 4 <= _number(nitrogen, "nitrogen_factor", where) <= 7:
+        raise CatalogueProblem(where, f"nitrogen_factor {nitrogen} is not plausible.", "From 4 to 7, 'own' or 'feed'.")
     return {
         "id": identity,
         "title": _text(entry, "title", where),
         "targets": targets,
         "stage": _one_of(entry, "stage", STAGES, where),
-        "kind": str(entry.get("kind", "")),
+        "kind": _one_of(entry, "kind", KINDS, where) if "kind" in entry else "",
         "route": _one_of(entry, "route", ROUTES, where),
         "law": bool(entry.get("law", False)),
         "body": str(entry.get("body", "")),
         "bomb_allowed": str(entry.get("bomb_allowed", "unknown")),
-        "nitrogen_factor": nitrogen if nitrogen == "own" else float(nitrogen),
+        "nitrogen_factor": nitrogen if nitrogen in ("own", "feed") else float(nitrogen),
         "citation": publication.citation,
         "locator": locator,
         "source_status": status,
@@ -155,6 +184,7 @@ def _common(entry: Mapping[str, Any], publication: Publication, path: Path) -> d
         "note": str(entry.get("note", "")),
         "file": path.name,
         "checks": tuple(_check(c, where) for c in entry.get("check", ())),
+        "tolerance": read_tolerance(entry["tolerance"], where) if "tolerance" in entry else None,
     }
 
 
@@ -162,7 +192,8 @@ def _check(entry: Mapping[str, Any], where: str) -> Check:
     tolerance = _number(_need(entry, "tolerance", object, where), "tolerance", where)
     if tolerance < 0:
         raise CatalogueProblem(where, f"the tolerance {tolerance} is negative.", "Give it as a positive number.")
-    _unit(str(_need(entry, "unit", str, where)), None, where)
+    unit = str(_need(entry, "unit", str, where))
+    _unit(unit, "fraction" if unit.startswith(("%", "fraction")) else "mass" if "/" not in unit else None, where)
     return Check(
         name=str(_need(entry, "name", str, where)),
         inputs={
@@ -338,25 +369,29 @@ def _equation(entry: Mapping[str, Any], publication: Publication, path: Path) ->
     formula = _formula(str(_need(entry, "formula", str, where)), where)
     heats = _formula(entry["heats"], where) if "heats" in entry else None
     result, any_basis = _split_any(str(_need(entry, "result", str, where)))
-    dimension = "fraction" if common["stage"] == "digestibility" else "energy"
+    usual = "fraction" if common["stage"] in ("digestibility", "other") else "energy"
+    dimension = _one_of(entry, "dimension", ("energy", "fraction", "mass_fraction", "mass"), where, default=usual)
     unit = _unit(result, dimension, where)
-    if not any_basis and unit.basis is None and dimension == "energy":
+    if not any_basis and unit.basis is None and dimension in ("energy", "mass_fraction"):
         raise CatalogueProblem(where, f"result '{result}' has no basis.", "Write for example 'kcal/g as is', or 'any'.")
     declared = _need(entry, "symbols", dict, where)
     symbols = {name: _symbol(name, s, unit.scale, where) for name, s in declared.items()}
     unknown = sorted((formula.symbols | (heats.symbols if heats else frozenset())) - set(symbols))
     if unknown:
         raise CatalogueProblem(where, f"the formula uses {', '.join(unknown)}.", "Say what they are under symbols.")
-    unused = sorted(set(symbols) - formula.symbols - (heats.symbols if heats else frozenset()))
-    if unused:
-        raise CatalogueProblem(where, f"symbols never used: {', '.join(unused)}.", "Take them out.")
     bounds = []
     for b in entry.get("domain", ()):
         if b.get("symbol") not in symbols and b.get("symbol") != "result":
-            raise CatalogueProblem(where, f"the domain names '{b.get('symbol')}'.", "Use a symbol of the formula.")
+            raise CatalogueProblem(where, f"the domain names '{b.get('symbol')}'.", "Use one of the entry's symbols.")
         low, high = (None if b.get(k) is None else _number(b[k], k, where) for k in ("low", "high"))
         bounds.append(Bound(b["symbol"], low, high, str(b.get("locator", ""))))
-    return [_system_of(common, entry, formula, heats, symbols, unit, any_basis, bounds)]
+    spoken_of = formula.symbols | (heats.symbols if heats else frozenset()) | {b.symbol for b in bounds}
+    unused = sorted(set(symbols) - spoken_of)
+    if unused:
+        raise CatalogueProblem(where, f"symbols never used: {', '.join(unused)}.", "Take them out.")
+    # a share, a ratio or an amount per head stands on no basis
+    basis = "any" if any_basis or dimension in ("fraction", "mass") else (unit.basis or "as_is")
+    return [_system_of(common, entry, formula, heats, symbols, unit, basis, bounds)]
 
 
 def _system_of(
@@ -366,7 +401,7 @@ def _system_of(
     heats: Formula | None,
     symbols: dict[str, Symbol],
     unit: Any,
-    any_basis: bool,
+    basis: str,
     bounds: list[Bound],
 ) -> System:
     return System(
@@ -376,7 +411,7 @@ def _system_of(
         symbols=symbols,
         result_unit=unit.display,
         result_scale=unit.scale,
-        result_basis="any" if any_basis else (unit.basis or "as_is"),
+        result_basis=basis,
         energy_family=unit.energy_family or "",
         by_group=any(s.table and s.slug is None and s.fallback is None for s in symbols.values()),
         residual_sd=None if "residual_sd" not in entry else _number(entry["residual_sd"], "residual_sd", common["id"]),
@@ -461,9 +496,11 @@ def derived_rules() -> dict[str, tuple[DerivedRule, ...]]:
 def systems() -> dict[str, System]:
     """Every shipped system by id."""
     found: dict[str, System] = {}
-    for path in sorted(FOLDER.glob("*.toml")):
-        if path.stem not in NOT_SYSTEMS:
-            _join(found, read_file(path))
+    paths = [path for path in sorted(FOLDER.glob("*.toml")) if path.stem not in NOT_SYSTEMS]
+    for path in paths:
+        _join(found, read_file(path))
+    for path in paths:  # chains are made of entries, which may stand in any file
+        _join(found, read_chains(path, found))
     return found
 
 
@@ -471,6 +508,7 @@ def with_house(path: str | Path) -> dict[str, System]:
     """The shipped systems and those of a house file; the same rules hold for both."""
     found = dict(systems())
     _join(found, read_file(Path(path)))
+    _join(found, read_chains(Path(path), found))
     return found
 
 

@@ -13,7 +13,10 @@ from typing import Any
 
 from energy.formula import Formula
 
-STAGES = ("GE", "DE", "ME", "NE", "label", "digestibility")
+#: in the order energy is lost; digestibility, UE, CH4E and "other" (ratios, efficiencies) are steps between
+STAGES = ("GE", "digestibility", "DE", "UE", "CH4E", "ME", "NE", "label", "other")
+#: kinds of a stage that have a name of their own
+KINDS = ("NME", "AME", "AMEn", "TME", "TMEn", "NEL", "NEm", "NEg", "organic_matter", "elements", "ME/DE", "efficiency")
 ROUTES = ("bomb", "composition", "declared", "loss")
 TARGETS = (
     "human", "dog", "cat", "growing_pig", "sow", "poultry", "duck", "cattle", "dairy_cow", "sheep", "horse",
@@ -77,12 +80,27 @@ class Symbol:
 
 @dataclass(frozen=True)
 class Bound:
-    """A limit of validity, in the symbol's unit."""
+    """A limit of validity, in the symbol's unit. symbol : of the formula, of the entry's symbols, or "result"."""
 
     symbol: str
     low: float | None = None
     high: float | None = None
     locator: str = ""
+
+
+@dataclass(frozen=True)
+class Tolerance:
+    """What difference a law bears between a declared and a checked energy.
+
+    below, above : shares of the declared value (0.05). absolute : MJ/kg. Either may be None.
+    """
+
+    words: str
+    below: float | None
+    above: float | None
+    absolute: float | None
+    locator: str
+    source_status: str
 
 
 @dataclass(frozen=True)
@@ -155,8 +173,16 @@ class System:
     components: tuple[Component, ...] = ()
     takes_out: tuple[str, ...] = ()  # determined apart: leaves a carbohydrate that was found by difference
     checks: tuple[Check, ...] = ()
+    steps: tuple[str, ...] = ()  # ids of the entries a chain is made of, in order
+    tolerance: Tolerance | None = None
     note: str = ""
     file: str = ""
+
+    @cached_property
+    def inputs(self) -> dict[str, Symbol]:
+        """Symbols of the formula; those that speak of the domain only are left out."""
+        used = self.formula.symbols | (self.heats.symbols if self.heats else frozenset())
+        return {name: symbol for name, symbol in self.symbols.items() if name in used}
 
     @cached_property
     def homogeneous(self) -> bool:
@@ -164,7 +190,7 @@ class System:
 
         Such a system may be used on any basis: per kg of dry matter in, per kg of dry matter out.
         """
-        bases = {s.basis for s in self.symbols.values() if s.quantity} | {self.result_basis}
+        bases = {s.basis for s in self.inputs.values() if s.quantity} | {self.result_basis}
         return len(bases - {None}) <= 1 and _degree_one(self)
 
 
@@ -172,8 +198,9 @@ def _degree_one(system: System) -> bool:
     """Doubling every amount doubles the result (tried at three points; exact for what formulas here can be)."""
     from energy.algebra import Source
 
-    amounts = [n for n, s in system.symbols.items() if s.quantity and s.scale > 0]
-    variables = {name: f"v[{name!r}]" for name in system.symbols}
+    # shares, digestibilities and plain numbers do not grow with the amounts
+    amounts = [n for n, s in system.inputs.items() if s.quantity and s.scale > 0 and s.basis is not None]
+    variables = {name: f"v[{name!r}]" for name in system.inputs}
     source = Source([system.formula.node], variables)
     final = source.text(system.formula.node)
     code = compile("\n".join([*source.lines, f"out = {final}"]), "<formula>", "exec")
@@ -189,7 +216,7 @@ def _degree_one(system: System) -> bool:
 
     with np.errstate(all="ignore"):
         for trial in range(3):
-            point = {name: 0.31 + 0.17 * ((7 * i + 3 * trial) % 5) for i, name in enumerate(system.symbols)}
+            point = {name: 0.31 + 0.17 * ((7 * i + 3 * trial) % 5) for i, name in enumerate(system.inputs)}
             double = {n: 2 * v if n in amounts else v for n, v in point.items()}
             a, b = value(point), value(double)
             if not np.isclose(b, 2 * a, rtol=1e-9, atol=0):
