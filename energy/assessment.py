@@ -9,7 +9,8 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from energy import display, reasons, views
+from energy import display, order, reasons, views
+from energy import partition as partitions
 from energy.catalogue import reader
 from energy.catalogue.records import TARGETS, System
 from energy.choice import Choice, Wanted, choose, choose_shipped
@@ -54,7 +55,11 @@ def assess(
         catalogue = reader.with_house(house)
         choice = choose(catalogue, wanted, columns)
     blocks = evaluate(batch, choice.systems, choice.pairs)
-    return Assessment(batch, choice, blocks, coverage, display.display(unit, basis, blocks.basis), catalogue)
+    shown = display.display(unit, basis, blocks.basis)
+    if aim in ("human", "none"):  # a food's ME is never set beside its GE by one system alone
+        return Assessment(batch, choice, blocks, coverage, shown, catalogue)
+    findings = order.find(batch, choice.systems, blocks, catalogue)
+    return Assessment(batch, choice, blocks, coverage, shown, catalogue, findings)
 
 
 def _read(table: str | Path | pd.DataFrame, target: str | None) -> Samples:
@@ -87,6 +92,7 @@ class Assessment:
     coverage: float
     shown: display.Display
     catalogue: dict[str, System] = field(repr=False)
+    findings: order.Findings = field(default_factory=order.Findings, repr=False)
 
     @property
     def target(self) -> str:
@@ -100,8 +106,8 @@ class Assessment:
 
     @property
     def problems(self) -> list[Problem]:
-        """Everything found while reading the table."""
-        return self.samples.problems
+        """Everything found while reading the table, and values in it that cannot stand together."""
+        return self.samples.problems + self.findings.problems
 
     @cached_property
     def width(self) -> np.ndarray:
@@ -190,8 +196,8 @@ class Assessment:
         return reasons.explain(self, sample_id)
 
     def partition(self, sample_id: str) -> pd.DataFrame:
-        """GE -> losses -> ME of both routes."""
-        return reasons.partition(self, sample_id)
+        """GE, each loss, and what is left, by both routes."""
+        return partitions.partition(self, sample_id)
 
     def notes(self, sample_id: str) -> list[str]:
         """What a reader must know and what is not a cause of a difference."""

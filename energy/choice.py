@@ -15,6 +15,8 @@ from energy.evaluate import Pair
 from energy.problems import WrongUse
 
 MEASURED = "gross_energy_measured"
+#: stages of which one figure per sample leads; digestibilities, losses and ratios are steps on the way
+LED = ("GE", "DE", "ME", "NE", "label")
 
 
 @dataclass(frozen=True)
@@ -178,7 +180,7 @@ def _leading(
     found: dict[str, list[str]] = {}
     stages = {s.id: s.stage for s in chosen}
     for identity in dict.fromkeys(order):
-        if identity in stages:
+        if stages.get(identity) in LED:
             found.setdefault(stages[identity], []).append(identity)
     return {stage: tuple(ids) for stage, ids in found.items()}
 
@@ -187,7 +189,7 @@ def _limit(catalogue: Mapping[str, System], wanted: Wanted, default: Mapping[str
     """The user's practical limit, else the law's energy tolerance, else the target's default."""
     if wanted.limit is not None:
         return read_limit(wanted.limit)
-    tolerance = catalogue[wanted.law].tolerance if wanted.law in catalogue else None
+    tolerance = catalogue[wanted.law].tolerance if wanted.law is not None and wanted.law in catalogue else None
     if tolerance is not None and tolerance.absolute is not None:
         return Limit(0.0, tolerance.absolute, 0.0, f"the law's tolerance, {tolerance.words}")
     floor = float(default.get("limit_floor_kJ_per_100g", 0.0)) * 0.01

@@ -24,10 +24,10 @@ from energy.samples import Samples
 CHUNK = 16_384
 #: worst last
 STATUS = (
-    "ok", "assumed", "outside_domain", "method_mismatch", "missing_input", "missing_factor", "not_admissible",
+    "ok", "assumed", "outside_domain", "method_mismatch", "implausible", "missing_input", "missing_factor", "not_admissible",
     "problem",
 )  # fmt: skip
-OK, ASSUMED, OUTSIDE, METHOD, MISSING, NO_FACTOR, NOT_ADMISSIBLE, PROBLEM = range(8)
+OK, ASSUMED, OUTSIDE, METHOD, IMPLAUSIBLE, MISSING, NO_FACTOR, NOT_ADMISSIBLE, PROBLEM = range(9)
 
 #: which amount a table row belongs to; a missing row matters where the amount is present
 ROW_AMOUNT = {

@@ -19,11 +19,14 @@ from energy.units import Unit
 METHOD_WORDS = {
     "soxhlet": "ether_extract", "ether extract": "ether_extract", "ether extraction": "ether_extract",
     "weibull stoldt": "acid_hydrolysis", "acid hydrolysis": "acid_hydrolysis", "schmid bondzynski ratzlaff": "acid_hydrolysis",
+    "freeze dried": "freeze_drying", "lyophilised": "freeze_drying", "lyophilized": "freeze_drying",
     "karl fischer": "karl_fischer", "oven drying": "oven", "freeze drying": "freeze_drying", "vacuum oven": "vacuum",
 }  # fmt: skip
 
 #: units in which problems tell a value
 UNIT_SHOWN = {"energy": "MJ/kg", "density": "g/ml", "mass": "kg", "heat": "MJ", "gas_yield": "ml/g"}
+#: moisture above which a freeze-dried material was wet as it came: the powder is not the material
+WET = 0.15
 
 
 @dataclass
@@ -106,8 +109,8 @@ class Table:
                 values, dictionary()[quantity].default_u, found.u, found.u_censored
             )
         self._check_ranges(samples)
-        self._check_preparation(samples)
         self._check_text(samples)
+        self._check_preparation(samples)
         if self.declared:
             samples.memo["declared"] = self.declared
         samples.fill_default_u()
@@ -148,6 +151,7 @@ class Table:
                           i, quantity)  # fmt: skip
             if lacking.any():
                 self._void(samples, quantity, lacking)
+        self._check_freeze_drying(samples, residual)
         alcohol = samples.columns.get("alcohol")
         if alcohol is not None and "moisture" in samples.columns:
             method = samples.text.get("moisture_method", np.full(len(self.ids), None, dtype=object))
@@ -155,6 +159,25 @@ class Table:
             for i in np.flatnonzero(loses & (np.nan_to_num(alcohol) > 0.002)).tolist():
                 self.tell("moisture by drying holds the alcohol as well, and alcohol is given apart.",
                           "Use Karl Fischer water, or subtract the alcohol from the loss.", i, "moisture", None, "warning")  # fmt: skip
+
+    def _check_freeze_drying(self, samples: Samples, residual: np.ndarray) -> None:
+        """A freeze-dried powder keeps some per cent of water: without it neither GE nor dry matter stands."""
+        n = len(self.ids)
+        nothing = np.full(n, None, dtype=object)
+        wet = np.nan_to_num(samples.columns.get("moisture", np.zeros(n))) > WET
+        wet |= samples.columns.get("dry_matter", np.ones(n)) < 1 - WET
+        dried = np.array([m == "freeze_drying" for m in samples.text.get("moisture_method", nothing)], dtype=bool)
+        dried |= wet & np.array([f == "freeze_dried" for f in samples.text.get("form", nothing)], dtype=bool)
+        dried |= ~np.isnan(samples.columns.get("preparation_yield", np.full(n, np.nan)))
+        energy = samples.columns.get("gross_energy", np.full(n, np.nan))
+        lacking = dried & np.isnan(residual) & ~np.isnan(energy)
+        for i in np.flatnonzero(lacking).tolist():
+            self.tell("the material was freeze-dried, but the residual moisture of the powder is not given: its gross energy"
+                      " would be understated by as many per cent as the powder holds water (usually 2 to 6).",
+                      "Add residual_moisture [%], measured on the day of the pellets; write 0 only if it was measured as 0.",
+                      i, "gross_energy")  # fmt: skip
+        if lacking.any():
+            self._void(samples, "gross_energy", lacking)
 
     def _check_text(self, samples: Samples) -> None:
         if "target" in samples.text:

@@ -7,24 +7,15 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from energy.catalogue import reader, tables
-from energy.catalogue.records import SOURCE_STATUS, System
+from energy.catalogue import tables
+from energy.catalogue.records import System
 from energy.compare import BIASED, CONCORDANT, DISCORDANT, INCONCLUSIVE, NOT_COMPUTED, SINGLE_ROUTE, VERDICTS
-from energy.display import Display, basis_factor, quantity_values, scale_of, visible
+from energy.display import basis_factor, quantity_values, scale_of, visible
 from energy.evaluate import (
-    METHOD,
     MISSING,
-    NO_FACTOR,
-    OUTSIDE,
-    STATUS,
-    BySystem,
-    assumes_nitrogen_factor,
-    is_listed,
-    plan,
 )
-from energy.explain import Facts, component_amounts, parts_by_component, rank
-from energy.quantities import dictionary
-from energy.resolve import Resolver, Signature, signatures
+from energy.explain import Facts, component_amounts, is_amount, parts_by_component, rank
+from energy.figures import figure_reasons
 from energy.samples import BASIS_CODE, Samples
 
 if TYPE_CHECKING:
@@ -36,130 +27,6 @@ STAGE_WORDS = {
     "GE": "gross energy", "DE": "digestible energy", "ME": "metabolizable energy", "NE": "net energy",
     "label": "label energy (not a metabolizable energy)",
 }  # fmt: skip
-
-
-def quantity_title(name: str) -> str:
-    """What people call a quantity."""
-    known = dictionary().get(name)
-    return known.title if known else name.replace("_", " ")
-
-
-# ---- a figure -------------------------------------------------------------------------------------------------
-
-
-def figure_reasons(a: Assessment, i: int) -> np.ndarray:
-    """(n,) text per figure of system i: what was assumed, what is missing, what lies outside; '' if nothing."""
-    system = a.choice.systems[i]
-    found = np.full(len(a.samples), "", dtype=object)
-    wanted = tuple(BySystem(s) for s in a.choice.systems)
-    columns = frozenset(a.samples.columns)
-    for signature, rows in signatures(a.samples):
-        here = np.arange(len(a.samples)) if rows is None else rows
-        made = plan(signature, columns, wanted, a.blocks.pairs)
-        status = made.status[i]
-        resolver = Resolver(signature, columns)
-        if not made.computed[i]:
-            found[here] = _missing_words(a.samples, resolver, system)
-            continue
-        fixed = [*_fixed_words(resolver, system), *_unit_words(system, a.shown)]
-        notes: list[tuple[np.ndarray, str]] = []
-        for column in status.required:
-            empty = np.isnan(a.samples.columns[column][here])
-            bad = a.samples.voided.get(column, np.zeros(len(a.samples), dtype=bool))[here]
-            notes.append((bad, f"{quantity_title(column)}: the value given could not be used"))
-            notes.append((empty & ~bad, f"needs {quantity_title(column)}: not given"))
-        for column in (c for c in status.optional if is_listed(system, c)):
-            gone = np.isnan(a.samples.columns[column][here])
-            notes.append((gone, _zero_words(system, column)))
-        code = a.blocks.status[i, here]
-        notes.append((code == NO_FACTOR, "the food group has no factor for a component that is present"))
-        notes.append((code == METHOD, f"needs another method: {_methods(system)}"))
-        notes.append((code == OUTSIDE, f"outside its domain: {_domain(system)}"))
-        found[here] = _join(fixed, notes, len(here))
-    return found
-
-
-def _join(fixed: list[str], notes: list[tuple[np.ndarray, str]], n: int) -> np.ndarray:
-    """Texts per row, made once per combination of notes that occurs."""
-    live = [(mask, text) for mask, text in notes if text and mask.any()]
-    code = np.zeros(n, dtype=np.int64)
-    for k, (mask, _) in enumerate(live[:60]):
-        code |= mask.astype(np.int64) << k
-    unique, inverse = np.unique(code, return_inverse=True)
-    texts = [
-        "; ".join(dict.fromkeys([*[t for k, (_, t) in enumerate(live[:60]) if c >> k & 1], *fixed])) for c in unique
-    ]
-    return np.array(texts, dtype=object)[inverse]
-
-
-def _fixed_words(resolver: Resolver, system: System) -> list[str]:
-    words = [_zero_sentence(quantity, then) for quantity, then in resolver.assumed(system).items()]
-    if assumes_nitrogen_factor(resolver, system):
-        words.append("nitrogen factor 6.25 assumed for the protein given")
-    return words
-
-
-def _unit_words(system: System, shown: Display) -> list[str]:
-    """Which figure is the source's own and which is a conversion, in the unit shown."""
-    if system.route != "composition" or system.stage == "GE":
-        return []
-    if system.twin.startswith("conversion"):
-        return [f"second unit by conversion, 1 kcal = {system.twin.removeprefix('conversion_')} kJ"]
-    words = []
-    in_joules = shown.family == "J" or shown.unit == "MJ/kg"
-    if system.energy_family == "cal" and in_joules:
-        words.append("summed in kcal; shown by 1 kcal = 4.184 kJ, which is not the source's own")
-    if system.energy_family == "J" and shown.family == "cal":
-        words.append("summed in kJ; shown by 1 kcal = 4.184 kJ, which is not the source's own")
-    if shown.unit.startswith("Btu"):
-        words.append("shown by 1 Btu/lb = 2326 J/kg, which is not the source's own")
-    return words
-
-
-def _zero_words(system: System, quantity: str) -> str:
-    for symbol in system.inputs.values():
-        if symbol.quantity == quantity:
-            if symbol.absent == "zero":
-                return ""
-            return _zero_sentence(quantity, symbol.absent_then)
-    if quantity == "nitrogen_factor":
-        return "nitrogen factor not given: 6.25 assumed"
-    for rules in reader.derived_rules().values():
-        for rule in rules:
-            if rule.optional.get(quantity):
-                return _zero_sentence(quantity, rule.optional[quantity])
-    return ""
-
-
-def _zero_sentence(quantity: str, then: str) -> str:
-    return f"{quantity_title(quantity)} not given: taken as 0" + (f" (any there is counts {then})" if then else "")
-
-
-def _missing_words(samples: Samples, resolver: Resolver, system: System) -> str:
-    if system.by_group and resolver.signature.group == 0:
-        return "needs a food group of the table; none, or an unknown one, is given"
-    lacking = [
-        quantity_title(s.quantity)
-        for s in system.inputs.values()
-        if s.quantity
-        and s.name in system.formula.symbols
-        and s.absent == "missing_input"
-        and resolver.symbol(s, system) is None
-    ]
-    if not lacking:
-        return "cannot be computed from what is given"
-    return f"needs {', '.join(dict.fromkeys(lacking))}: not given, nor derivable on this basis"
-
-
-def _methods(system: System) -> str:
-    return "; ".join(f"{c.replace('_', ' ')} {' or '.join(m)}" for c, m in system.requires_methods.items())
-
-
-def _domain(system: System) -> str:
-    return "; ".join(
-        f"{b.symbol} {'' if b.low is None else f'from {b.low:g} '}{'' if b.high is None else f'to {b.high:g}'}".strip()
-        for b in system.domain
-    )
 
 
 # ---- a comparison ---------------------------------------------------------------------------------------------
@@ -276,7 +143,8 @@ def shown_system(a: Assessment, identity: str) -> System:
     return system
 
 
-def _factor(a: Assessment, row: int) -> float:
+def factor_of(a: Assessment, row: int) -> float:
+    """What a value on the working basis is multiplied by to stand on the basis shown, for one sample."""
     factor = basis_factor(a.samples, a.blocks.basis, a.shown.basis)
     return float(factor if isinstance(factor, float) else factor[row])
 
@@ -292,7 +160,7 @@ def explain(a: Assessment, sample_id: str) -> pd.DataFrame:
         return pd.DataFrame(columns=columns)
     b, pair = a.blocks, a.blocks.pairs[p]
     composition = shown_system(a, pair.composition)
-    k, k_composition = (scale_of(s, a.shown) * _factor(a, row) for s in (a.catalogue[pair.bomb], composition))
+    k, k_composition = (scale_of(s, a.shown) * factor_of(a, row) for s in (a.catalogue[pair.bomb], composition))
     # the twin's own sum stands on the label in this unit; the change belongs to the convention
     change = b.value[b.row(composition.id), row] - b.value[b.row(pair.composition), row]
     measured, at_heats = b.at_heats[p, row] + b.measurement[p, row], b.at_heats[p, row]
@@ -302,9 +170,14 @@ def explain(a: Assessment, sample_id: str) -> pd.DataFrame:
          "words": "what the bomb system makes of the measured GE, and of the GE computed from the components' heats"}
     ]  # fmt: skip
     values = {name: quantity_values(a.samples, name)[row] for name in (
-        "crude_protein", "crude_fat", "carbohydrate_all", "alcohol", "total_dietary_fibre", "polyols",
+        "crude_protein", "crude_fat", "carbohydrate_all", "alcohol", "total_dietary_fibre", "crude_fibre", "polyols",
         "organic_acids", "sugars", "starch")}  # fmt: skip
-    amounts = component_amounts(values, _own_factor(a.samples, row))
+    feed = a.catalogue[pair.heats].nitrogen_factor == "feed"
+    fibre = "crude_fibre" if feed else "total_dietary_fibre"
+    amounts = component_amounts(values, 6.25 if feed else _own_factor(a.samples, row), fibre)
+    if feed:
+        given = [n for n in a.samples.columns if n not in values and is_amount(n)]
+        amounts |= {n: float(np.nan_to_num(quantity_values(a.samples, n)[row])) for n in given}
     for line in parts_by_component(a.samples, row, replace(pair, composition=composition.id), a.catalogue, amounts):
         if line["component"] == "protein":
             line["amount"] *= amounts["own_factor"]
@@ -318,16 +191,20 @@ def explain(a: Assessment, sample_id: str) -> pd.DataFrame:
         whole = getattr(b, part)[p, row] - (change if part == "convention" else 0.0)
         rest = whole - sum(x["contribution"] for x in lines if x["part"] == part)
         if abs(rest) > 1e-9:
-            lines.append({"part": part, "component": "columns that do not agree", "amount": np.nan, "bomb": np.nan,
-                          "composition": np.nan, "contribution": rest,
-                          "words": "the table gives carbohydrate in two ways that differ"})  # fmt: skip
+            component, words = (
+                ("not by component", "constants of the equations, water, and fibre where it sets a digestibility")
+                if feed
+                else ("columns that do not agree", "the table gives carbohydrate in two ways that differ")
+            )
+            lines.append({"part": part, "component": component, "amount": np.nan, "bomb": np.nan,
+                          "composition": np.nan, "contribution": rest, "words": words})  # fmt: skip
     frame = pd.DataFrame(lines)
     other = np.where(frame["part"] == "convention", k_composition, k)
     shift = np.nan_to_num(frame["composition"].to_numpy(dtype=float)) * (other - k)
     frame["bomb"] = frame["bomb"] * k
     frame["composition"] = frame["composition"] * other
     frame["contribution"] = frame["contribution"] * k - shift
-    frame["amount"] = 100 * frame["amount"] * _factor(a, row)
+    frame["amount"] = 100 * frame["amount"] * factor_of(a, row)
     frame["unit"] = a.shown.unit
     return frame[columns]
 
@@ -349,50 +226,6 @@ def _own_factor(samples: Samples, row: int) -> float:
     if "nitrogen_factor" in samples.columns and not np.isnan(samples.columns["nitrogen_factor"][row]):
         return float(samples.columns["nitrogen_factor"][row])
     return 6.25
-
-
-def partition(a: Assessment, sample_id: str) -> pd.DataFrame:
-    """GE -> losses -> ME of both routes, one line each, in the unit shown."""
-    import pandas as pd
-
-    row, b = a.index(sample_id), a.blocks
-    p = main_pair(a, row)
-    pairs = [q for q in range(len(b.pairs)) if row in pair_rows(a, q)]
-    pair = b.pairs[p or pairs[min(1, len(pairs) - 1)]]
-    lines = []
-    for route, start, end in (
-        ("bomb", b.pairs[0].bomb, pair.bomb),
-        ("composition", b.pairs[0].heats, shown_system(a, pair.composition).id),
-    ):
-        top, bottom = (_figure(a, x, row) for x in (start, end))
-        lines.append(_line(a, route, "gross energy", start, row, top))
-        if end in (start, b.pairs[0].heats):
-            continue
-        loss = {"value": top["value"] - bottom["value"], "u": np.nan}
-        stage = a.catalogue[end].stage
-        words = "urine only: no faecal loss is taken off" if stage == "label" else "not digested, and lost in urine"
-        lines.append({**_line(a, route, "not used by the eater", end, row, loss), "stage": "loss", "words": words})
-        lines.append(_line(a, route, STAGE_WORDS[stage], end, row, bottom))
-    frame = pd.DataFrame(lines)
-    for line_system in frame["system"].unique():
-        mask = frame["system"] == line_system
-        frame.loc[mask, ["value", "u"]] *= scale_of(a.catalogue[str(line_system)], a.shown) * _factor(a, row)
-    return frame
-
-
-def _figure(a: Assessment, system: str, row: int) -> dict[str, float]:
-    i = a.blocks.row(system)
-    return {"value": float(a.blocks.value[i, row]), "u": float(a.blocks.u[i, row])}
-
-
-def _line(a: Assessment, route: str, step: str, system: str, row: int, figure: dict[str, float]) -> dict[str, Any]:
-    s = a.catalogue[system]
-    why = "" if np.isfinite(figure["value"]) else str(figure_reasons(a, a.blocks.row(system))[row])
-    return {
-        "route": route, "step": step, "stage": s.stage, "system": s.id, **figure, "unit": a.shown.unit,
-        "words": why or s.title, "source": s.citation, "locator": s.locator,
-        "source_status": SOURCE_STATUS[s.source_status],
-    }  # fmt: skip
 
 
 def notes(a: Assessment, sample_id: str) -> list[str]:
@@ -430,7 +263,10 @@ def questions(a: Assessment, sample_id: str) -> list[tuple[str, str]]:
     material = pair_reasons(a, 0, np.array([row]))[0]
     leads = [
         f"{STAGE_WORDS[s.stage]}: {_say(a, b.row(s.id), row)} by {s.id}"
-        for s in (shown_system(a, x.id) for x in a.choice.systems if a.leading[b.row(x.id), row])
+        for s in sorted(
+            (shown_system(a, x.id) for x in a.choice.systems if a.leading[b.row(x.id), row]),
+            key=lambda s: list(STAGE_WORDS).index(s.stage),
+        )
     ]
     if p is None:
         routes = "one route only: nothing to compare"
@@ -466,9 +302,12 @@ def _no_cause(code: int) -> str:
 def _say(a: Assessment, i: int, row: int) -> str:
     if not np.isfinite(a.blocks.value[i, row]):
         return f"nothing: {figure_reasons(a, i)[row]}"
-    k = scale_of(a.choice.systems[i], a.shown) * _factor(a, row)
+    k = scale_of(a.choice.systems[i], a.shown) * factor_of(a, row)
     basis = a.shown.basis.replace("_", " ")
-    return f"{a.blocks.value[i, row] * k:.4g} {a.shown.unit} {basis} (u {a.blocks.u[i, row] * k:.2g})"
+    u = a.blocks.u[i, row] * k
+    return (
+        f"{a.blocks.value[i, row] * k:.4g} {a.shown.unit} {basis} ({f'u {u:.2g}' if np.isfinite(u) else 'u not known'})"
+    )
 
 
 def _declared_words(a: Assessment, row: int) -> str:
@@ -485,6 +324,3 @@ def _declared_words(a: Assessment, row: int) -> str:
     if not said:
         return "none is declared"
     return f"declared {' and '.join(said)} as is; the law's tolerance is not judged here yet"
-
-
-__all__ = ["STATUS", "Signature", "causes", "explain", "figure_reasons", "notes", "pair_rows", "partition", "questions"]

@@ -299,6 +299,7 @@ class Resolver:
     def assumed(self, system: System) -> dict[str, str]:
         """Quantities a system counts as zero because their column is not there -> where they then count."""
         found: dict[str, str] = {}
+        settled = {s.quantity for s in system.inputs.values() if s.quantity and s.absent == "zero"}
         for symbol in system.inputs.values():
             if symbol.quantity is None:
                 continue
@@ -308,7 +309,7 @@ class Resolver:
             if choice > 0:
                 rule = derived_rules()[symbol.quantity][choice - 1]
                 for name, words in rule.optional.items():
-                    if words and self._gone(name):
+                    if words and name not in settled and self._gone(name):
                         found.setdefault(name, words)
         return found
 

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from energy import reasons
+from energy import figures, reasons
 from energy.catalogue.records import SOURCE_STATUS, System
 from energy.compare import VERDICTS
 from energy.display import basis_factor, scale_of, visible
@@ -71,7 +71,7 @@ def results(
             ("u", a.blocks.u[i, rows] * k),
             ("leading", leading_shown(a, i)[rows]),
             ("status", np.array(STATUS, dtype=object)[a.blocks.status[i, rows]]),
-            ("reason", reasons.figure_reasons(a, i)[rows]),
+            ("reason", figures.figure_reasons(a, i)[rows]),
         ):
             pieces[name].append(values)
         for name, text in (

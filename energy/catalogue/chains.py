@@ -211,3 +211,26 @@ def read_tolerance(entry: Mapping[str, Any], where: str) -> Tolerance:
         locator=str(entry["locator"]),
         source_status=str(entry["source_status"]),
     )
+
+
+def up_to(system: System, count: int, found: Mapping[str, System]) -> System:
+    """The first steps of a chain as a system of their own, for the energies between its ends."""
+    steps = [found[identity] for identity in system.steps[:count]]
+    if count == 1:
+        return steps[0]
+    last = steps[-1]
+    common = {
+        "id": last.id,
+        "title": last.title,
+        "targets": system.targets,
+        "stage": last.stage,
+        "kind": last.kind,
+        "route": system.route,
+        "nitrogen_factor": last.nitrogen_factor,
+        "citation": last.citation,
+        "locator": last.locator,
+        "source_status": last.source_status,
+        "domain_words": "",
+        "file": system.file,
+    }
+    return compose({"steps": system.steps[:count]}, common, found)

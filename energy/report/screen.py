@@ -31,7 +31,7 @@ BASIS_CHOICES = {"": "each header says its own", "as_is": "as is (as received, a
 DECIMAL_CHOICES = {"": "found out from the table", "point": "point: 1.5", "comma": "comma: 1,5"}
 STATUS_WORDS = {
     "ok": "", "assumed": "with assumptions", "outside_domain": "outside its domain", "method_mismatch": "needs another "
-    "method", "missing_input": "something is not given", "missing_factor": "no factor for this food", "not_admissible":
+    "method", "implausible": "cannot be, or hardly", "missing_input": "something is not given", "missing_factor": "no factor for this food", "not_admissible":
     "not allowed here", "problem": "a value could not be used",
 }  # fmt: skip
 U_WORDS = {"none": "not known", "given": "given", "replicates": "the replicates", "default": "the dictionary's default"}

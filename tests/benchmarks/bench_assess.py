@@ -43,7 +43,7 @@ def by_hand(samples):
         here = slice(low, min(low + CHUNK, n))
         chunk(*(samples.columns[c][here] for c in COLUMNS), *(samples.u[c][here] for c in COLUMNS),
               value[:, here], u[:, here], {k: v[:, here] for k, v in pairs.items()})  # fmt: skip
-    status[:] = np.array([0, 1, 4, 1, 1, 1, 1], dtype=np.int8)[:, None]
+    status[:] = np.array([0, 1, 5, 1, 1, 1, 1], dtype=np.int8)[:, None]
     return value, u, status, pairs
 
 
