@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from energy import cells, uncertainty
+from energy import cells, silage, uncertainty
 from energy.catalogue.records import TARGETS
 from energy.catalogue.tables import food_groups
 from energy.problems import Problem, StructuralProblems
@@ -111,6 +111,7 @@ class Table:
         self._check_ranges(samples)
         self._check_text(samples)
         self._check_preparation(samples)
+        silage.correct(samples)
         if self.declared:
             samples.memo["declared"] = self.declared
         samples.fill_default_u()

@@ -17,6 +17,7 @@ from energy.catalogue.records import System
 from energy.display import quantity_values
 from energy.evaluate import IMPLAUSIBLE, MISSING, Blocks, evaluate
 from energy.problems import Problem
+from energy.quantities import dictionary
 from energy.samples import Samples
 
 RANK = {"GE": 0, "DE": 1, "ME": 2, "NE": 3}
@@ -27,6 +28,19 @@ MEASURED = (
     ("metabolizable_energy", 2, "metabolizable energy"),
     ("apparent_metabolizable_energy", 2, "apparent metabolizable energy"), ("net_energy", 3, "net energy"),
 )  # fmt: skip
+#: (part, whole): the digestible part of a constituent is not more than the constituent
+PARTS = (
+    ("digestible_crude_protein", "crude_protein"), ("digestible_crude_fat", "crude_fat"),
+    ("digestible_crude_fibre", "crude_fibre"), ("digestible_nitrogen_free_extract", "nitrogen_free_extract"),
+    ("digestible_organic_matter", "organic_matter"), ("digestible_adf", "adf"), ("adf", "ndf"), ("lignin", "adf"),
+)  # fmt: skip
+#: (whole, losses, what must be left)
+BALANCES = (
+    ("gross_energy", ("faecal_energy",), "digestible_energy"),
+    ("digestible_energy", ("urinary_energy", "methane_energy"), "metabolizable_energy"),
+)
+#: share of the whole that rounding and means of animals may leave open
+BALANCE_ROOM = 0.01
 WORDS = {"GE": "gross energy", "DE": "digestible energy", "ME": "metabolizable energy", "NE": "net energy"}
 #: figures are compared with this much room for rounding
 ROOM = 1 + 1e-9
@@ -73,7 +87,8 @@ def find(samples: Samples, systems: Sequence[System], blocks: Blocks, catalogue:
 def _given(samples: Samples) -> dict[str, np.ndarray]:
     """Measured energies on the working basis."""
     names = [name for name, _, _ in MEASURED] + ["methane_energy", "faecal_energy", "urinary_energy"]
-    return {name: quantity_values(samples, name) for name in names if name in samples.columns}
+    names += [name for pair in PARTS for name in pair]
+    return {name: quantity_values(samples, name) for name in dict.fromkeys(names) if name in samples.columns}
 
 
 def _between(samples: Samples, system: System, catalogue: Mapping[str, System]) -> list[tuple[System, np.ndarray]]:
@@ -117,6 +132,13 @@ def _check_given(samples: Samples, given: Mapping[str, np.ndarray], found: Findi
                         f"impossible: {words} of {low[k]:.4g} MJ/kg is more than {upper_words} of {high[k]:.4g} MJ/kg."
                     )
                     _tell(samples, found, lower, k, what)
+    _check_balance(samples, given, found)
+    for part, whole in PARTS:
+        if {part, whole} <= given.keys():
+            for k in _over(given[part], given[whole]):
+                a, b = (dictionary()[name].title for name in (part, whole))
+                what = f"impossible: {a} of {100 * given[part][k]:.4g} % is more than {b} of {100 * given[whole][k]:.4g} %."
+                _tell(samples, found, part, k, what)
     gross = given.get("gross_energy")
     if gross is None:
         return
@@ -129,6 +151,21 @@ def _check_given(samples: Samples, given: Mapping[str, np.ndarray], found: Findi
             for k in _over(given[name], most * gross):
                 share = 100 * given[name][k] / gross[k]
                 _tell(samples, found, name, k, f"{words} is {share:.1f} % of gross energy, over {100 * most:.0f} %.")
+
+
+def _check_balance(samples: Samples, given: Mapping[str, np.ndarray], found: Findings) -> None:
+    """Given energies must close: DE = GE - faeces, ME = DE - urine - methane; rounding of printed figures is borne."""
+    for whole, losses, rest in BALANCES:
+        if not {whole, *losses, rest} <= given.keys():
+            continue
+        left = given[whole] - sum(given[name] for name in losses)
+        with np.errstate(invalid="ignore"):
+            open_rows = np.abs(left - given[rest]) > BALANCE_ROOM * given[whole]
+        for k in np.flatnonzero(open_rows).tolist():
+            a, b = dictionary()[whole].title, dictionary()[rest].title
+            what = (f"the balance does not close: {a} of {given[whole][k]:.4g} less {' and '.join(losses).replace('_', ' ')} "
+                    f"leaves {left[k]:.4g}, but {b} is given as {given[rest][k]:.4g} MJ/kg.")  # fmt: skip
+            _tell(samples, found, rest, k, what)
 
 
 def _over(value: np.ndarray, most: np.ndarray) -> list[int]:

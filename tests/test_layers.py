@@ -16,6 +16,7 @@ LAYERS = [
     ["energy.catalogue.reader"],
     ["energy.feedlaw"],
     ["energy.samples"],
+    ["energy.silage"],
     ["energy.tabular", "energy.cells", "energy.headers", "energy.uncertainty", "energy.gather"],
     ["energy.wide", "energy.long"],
     ["energy.intake"],

@@ -38,3 +38,10 @@ def food_matrix() -> tuple[dict[str, Any], ...]:
     """Where food structure hides energy from the eater: food groups, forms, words, source."""
     raw = tomllib.loads((FOLDER / "food_matrix.toml").read_text(encoding="utf-8"))
     return tuple(raw["matrix"])
+
+
+@cache
+def silage_corrections() -> dict[str, dict[str, Any]]:
+    """Text of the column `form` -> constant and slope of the dry matter correction, with its citation."""
+    raw = tomllib.loads((FOLDER / "silage_dry_matter.toml").read_text(encoding="utf-8"))
+    return {entry["form"]: {**entry, "source": raw["publication"]["citation"]} for entry in raw["correction"]}
