@@ -45,7 +45,7 @@ def parser() -> argparse.ArgumentParser:
 
 
 def _common(p: argparse.ArgumentParser) -> None:
-    p.add_argument("--target", help="human, dog, ... (else the table says)")
+    p.add_argument("--target", help="human, dog, ... (else the table's column 'target' says; it may name several)")
     p.add_argument("--law", help="a label law by its id, or 'all'")
     p.add_argument("--basis", help="basis of headers that name none: as_is, dry_matter, as_analysed, organic_matter")
     p.add_argument("--units", metavar="FILE", help='TOML file: "header" = "unit basis"')
@@ -82,28 +82,30 @@ def _tell(text: str) -> None:
     print(text, file=sys.stderr)
 
 
-def _run(options: argparse.Namespace) -> Assessment:
-    from energy.assessment import assess
+def _run(options: argparse.Namespace) -> list[Assessment]:
+    from energy.assessment import assess, assess_each, named_targets
     from energy.intake import read_samples
 
     samples = read_samples(
         options.file, units=options.units, basis=options.basis, target=options.target, decimal=options.decimal
     )
-    return assess(
-        samples,
-        bomb_system=options.bomb_system,
-        composition_system=options.composition_system,
-        law=options.law,
-        limit=options.limit,
-        systems=options.systems,
-        unit=options.unit,
-        house=options.house,
-    )
+    wishes = {
+        "bomb_system": options.bomb_system,
+        "composition_system": options.composition_system,
+        "law": options.law,
+        "limit": options.limit,
+        "systems": options.systems,
+        "unit": options.unit,
+        "house": options.house,
+    }
+    if options.target is None and len(named_targets(samples)) > 1:
+        return list(assess_each(samples, **wishes).values())
+    return [assess(samples, **wishes)]
 
 
 def _assess(options: argparse.Namespace) -> int:
     from energy.report import board
-    from energy.report.tables import check_ending, save
+    from energy.report.tables import check_ending, save_each
 
     words = [w.strip() for w in (options.fail_on or "").split(",") if w.strip()]
     unknown = [w for w in words if w not in VERDICTS]
@@ -112,15 +114,16 @@ def _assess(options: argparse.Namespace) -> int:
         return 2
     if options.out:
         check_ending(options.out)
-    assessment = _run(options)
-    print(board.text(assessment))
-    _problems(assessment)
+    assessments = _run(options)
+    print("\n\n".join(board.text(a) for a in assessments))
+    for assessment in assessments:
+        _problems(assessment)
     if options.out:
-        for path in save(assessment, options.out):
+        for path in save_each(assessments, options.out):
             _tell(f"written: {path}")
     for caution in board.CAUTIONS:
         _tell(caution)
-    met = set(words) & set(assessment.verdicts["verdict"])
+    met = set(words) & {v for a in assessments for v in a.verdicts["verdict"]}
     if met:
         _tell(f"--fail-on met: {', '.join(sorted(met))}")
         return 3

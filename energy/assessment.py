@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from functools import cached_property
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -46,6 +46,7 @@ def assess(
     """
     batch = samples if isinstance(samples, Samples) else _read(samples, target)
     aim = _target(batch, target)
+    batch = _rows_for(batch, aim)
     wanted = Wanted(aim, bomb_system, composition_system, law, limit, systems)
     columns = frozenset(batch.columns)
     if house is None:
@@ -68,18 +69,62 @@ def _read(table: str | Path | pd.DataFrame, target: str | None) -> Samples:
     return read_samples(table, target=target)
 
 
+def named_targets(samples: Samples) -> list[str]:
+    """The targets a table's own column names, in the order they appear."""
+    if "target" not in samples.text:
+        return []
+    return list(dict.fromkeys(str(t) for t in samples.text["target"] if t not in (None, "") and t == t))
+
+
 def _target(samples: Samples, target: str | None) -> str:
     wanted = target or samples.target
-    if wanted is None and "target" in samples.text:
-        named = {str(t) for t in samples.text["target"] if t not in (None, "") and t == t}
+    if wanted is None:
+        named = named_targets(samples)
         if len(named) > 1:
-            raise WrongUse(f"The table names several targets: {', '.join(sorted(named))}.", "Choose one with target=.")
+            raise WrongUse(f"The table names several targets: {', '.join(sorted(named))}.",
+                           "Choose one with target=, or take them one by one with assess_each.")  # fmt: skip
         wanted = next(iter(named), None)
     if wanted is None:
         raise WrongUse("It is not said for whom the energy is meant.", f"Give target=, one of: {', '.join(TARGETS)}.")
     if wanted not in TARGETS:
         raise WrongUse(f"The target '{wanted}' is not known.", f"One of: {', '.join(TARGETS)}.")
     return wanted
+
+
+def _rows_for(samples: Samples, target: str) -> Samples:
+    """The samples that are for a target, or for nobody named; what is left out is told."""
+    others = [t for t in named_targets(samples) if t != target]
+    if not others:
+        return samples
+    said = samples.text["target"].astype(str)
+    mine = ~np.isin(said, others)
+    if not mine.any():
+        raise WrongUse(f"No sample of the table is for {target}; it says {', '.join(others)}.",
+                       "Choose one of these, or mend the column 'target'.")  # fmt: skip
+    batch = samples.take(np.flatnonzero(mine))
+    counts = ", ".join(f"{int((said == t).sum())} for {t}" for t in others)
+    batch.problems.append(
+        Problem(f"left out, since they are for another species or use: {counts}.", "Choose that target to see them.",
+                samples.source, column="target", severity="warning")
+    )  # fmt: skip
+    return batch
+
+
+def assess_each(samples: Samples | str | Path | pd.DataFrame, **wishes: Any) -> dict[str, Assessment]:
+    """Assess a table that names several targets: target -> Assessment, in the order they appear.
+
+    wishes : as for `assess`, without target. Raises WrongUse where the column `target` is missing or empty in a row.
+    """
+    batch = samples if isinstance(samples, Samples) else _read(samples, None)
+    named = named_targets(batch)
+    empty = (
+        [] if not named else [str(i) for i, t in zip(batch.ids, batch.text["target"], strict=True) if not t or t != t]
+    )
+    if not named or empty:
+        what = f"No target is named for {', '.join(empty[:5])}." if empty else "The table names no target."
+        raise WrongUse(what, "Fill the column 'target', or give one target for all.")
+    said = batch.text["target"].astype(str)
+    return {t: assess(batch.take(np.flatnonzero(said == t)), target=t, **wishes) for t in named}
 
 
 @dataclass
@@ -233,7 +278,7 @@ def equations(
     rows = [
         views.equation_row(s)
         for s in found.values()
-        if (target is None or target in s.targets) and stage in (None, s.stage) and route in (None, s.route)
+        if (target is None or target in s.targets) and stage in (None, s.stage, s.kind) and route in (None, s.route)
     ]
     return pd.DataFrame(rows, columns=list(views.EQUATION_COLUMNS))
 
@@ -248,4 +293,4 @@ def demo_paths() -> list[Path]:
     raise WrongUse("The demo tables are not there.", "Install the package again.")
 
 
-__all__ = ["Assessment", "assess", "demo_paths", "equations"]
+__all__ = ["Assessment", "assess", "assess_each", "demo_paths", "equations"]

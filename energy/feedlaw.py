@@ -155,7 +155,7 @@ def _clean(declared: ArrayLike, unit: str) -> NDArray[np.float64]:
     return values
 
 
-def tolerance(
+def feed_tolerance(
     law: str, constituent: str, declared: ArrayLike, animal: str = "food_producing"
 ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     """The interval in which an analysed value may lie when `declared` stands on the label.

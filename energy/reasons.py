@@ -25,7 +25,8 @@ if TYPE_CHECKING:
 
 STAGE_WORDS = {
     "GE": "gross energy", "DE": "digestible energy", "ME": "metabolizable energy", "NE": "net energy",
-    "label": "label energy (not a metabolizable energy)",
+    "label": "label energy (not a metabolizable energy)", "digestibility": "digestibility", "UE": "energy in urine",
+    "CH4E": "energy in methane", "other": "ratio or amount",
 }  # fmt: skip
 
 

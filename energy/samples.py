@@ -94,6 +94,32 @@ class Samples:
         samples.fill_default_u()
         return samples
 
+    def take(self, rows: np.ndarray) -> Samples:
+        """The samples of some rows ((k,) indices), as a batch of their own; problems of the other rows are left out."""
+
+        def some(arrays: Mapping[str, np.ndarray]) -> dict[str, np.ndarray]:
+            return {name: values[rows] for name, values in arrays.items()}
+
+        ids = self.ids[rows]
+        mine = set(ids)
+        declared = self.memo.get("declared")
+        return Samples(
+            ids=ids,
+            columns=some(self.columns),
+            u=some(self.u),
+            u_source=some(self.u_source),
+            basis=some(self.basis),
+            text=some(self.text),
+            voided=some(self.voided),
+            censored=some(self.censored),
+            replicates=some(self.replicates),
+            target=self.target,
+            problems=[p for p in self.problems if p.sample_id is None or p.sample_id in mine],
+            rows=None if self.rows is None else self.rows[rows],
+            source=self.source,
+            memo={"declared": some(declared)} if declared else {},
+        )
+
     def fill_default_u(self) -> None:
         """Put the dictionary's default where a value has no standard uncertainty, and mark it 'default'."""
         for name, values in self.columns.items():

@@ -37,7 +37,7 @@ DECLARED_COLUMNS = (
 )  # fmt: skip
 BALANCE_COLUMNS = ("sample_id", "mass_sum", "heat_from_components", "residual_energy", "chi_square", "p_value")
 EQUATION_COLUMNS = (
-    "id", "title", "target", "stage", "route", "body", "law", "formula", "latex", "result", "nitrogen_factor", "twin",
+    "id", "title", "target", "stage", "kind", "route", "steps", "body", "law", "formula", "latex", "result", "nitrogen_factor", "twin",
     "domain", "residual_sd", "source", "locator", "source_status", "source_words", "note", "file",
 )  # fmt: skip
 
@@ -285,7 +285,9 @@ def equation_row(s: System) -> dict[str, Any]:
         "title": s.title,
         "target": ", ".join(s.targets),
         "stage": s.stage,
+        "kind": s.kind,
         "route": s.route,
+        "steps": ", ".join(s.steps),
         "body": s.body,
         "law": s.law,
         "formula": s.formula.text,

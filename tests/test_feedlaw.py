@@ -7,7 +7,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from energy.feedlaw import ANIMALS, laws, tolerance
+from energy.feedlaw import ANIMALS, feed_tolerance, laws
 from energy.problems import WrongUse
 
 EU = "eu_767_2009_annex_iv"
@@ -65,7 +65,7 @@ def rows_of(law, constituent=None):
     ],
 )
 def test_annex_iv_of_767_2009(constituent, declared, lower, upper):
-    assert tolerance(EU, constituent, declared) == pytest.approx((lower, upper), abs=1e-12)
+    assert feed_tolerance(EU, constituent, declared) == pytest.approx((lower, upper), abs=1e-12)
 
 
 @pytest.mark.parametrize(
@@ -79,7 +79,7 @@ def test_annex_iv_of_767_2009(constituent, declared, lower, upper):
     ],
 )
 def test_annex_iv_for_animals_not_kept_for_food(constituent, declared, lower, upper):
-    assert tolerance(EU, constituent, declared, "non_food_producing") == pytest.approx((lower, upper), abs=1e-12)
+    assert feed_tolerance(EU, constituent, declared, "non_food_producing") == pytest.approx((lower, upper), abs=1e-12)
 
 
 @pytest.mark.parametrize(
@@ -110,7 +110,7 @@ def test_annex_iv_for_animals_not_kept_for_food(constituent, declared, lower, up
     ],
 )
 def test_other_laws(law, constituent, declared, animal, lower, upper):
-    assert tolerance(law, constituent, declared, animal) == pytest.approx((lower, upper), abs=1e-12)
+    assert feed_tolerance(law, constituent, declared, animal) == pytest.approx((lower, upper), abs=1e-12)
 
 
 def boundaries(law, constituent, animal):
@@ -123,7 +123,7 @@ def jumps(law, constituent, animal):
     found = []
     for bound in boundaries(law, constituent, animal):
         around = np.array([np.nextafter(bound, 0), bound, np.nextafter(bound, INF)])
-        for end in tolerance(law, constituent, around, animal):
+        for end in feed_tolerance(law, constituent, around, animal):
             if np.isfinite(end).all() and np.ptp(end) > 1e-9:
                 found.append(bound)
     return sorted(set(found))
@@ -154,7 +154,7 @@ def test_annex_iv_has_boundaries_to_be_continuous_at():
 @pytest.mark.parametrize(("law", "constituent", "animal"), CASES)
 @given(declared=st.floats(0, 100))
 def test_the_declared_value_is_inside_its_interval(law, constituent, animal, declared):
-    lower, upper = tolerance(law, constituent, declared, animal)
+    lower, upper = feed_tolerance(law, constituent, declared, animal)
     assert lower <= declared <= upper
 
 
@@ -176,74 +176,74 @@ def test_no_declared_value_falls_into_two_classes_or_none(law, constituent, anim
 @pytest.mark.parametrize(("law", "constituent", "animal"), CASES)
 def test_many_at_once_are_the_same_as_one_by_one(law, constituent, animal):
     declared = np.linspace(0, 100, 41)
-    together = tolerance(law, constituent, declared, animal)
-    alone = np.array([tolerance(law, constituent, value, animal) for value in declared]).T
+    together = feed_tolerance(law, constituent, declared, animal)
+    alone = np.array([feed_tolerance(law, constituent, value, animal) for value in declared]).T
     np.testing.assert_array_equal(together, alone)
 
 
 def test_shape_is_kept():
-    lower, upper = tolerance(EU, "crude_fat", [[4.0, 10.0, 30.0], [5.0, 12.0, 40.0]])
+    lower, upper = feed_tolerance(EU, "crude_fat", [[4.0, 10.0, 30.0], [5.0, 12.0, 40.0]])
     assert lower.shape == upper.shape == (2, 3)
 
 
 def test_an_empty_batch_is_answered_empty():
-    assert [end.size for end in tolerance(EU, "crude_fat", [])] == [0, 0]
+    assert [end.size for end in feed_tolerance(EU, "crude_fat", [])] == [0, 0]
 
 
 def test_nothing_declared_has_no_interval():
-    assert np.isnan(tolerance(EU, "moisture", np.nan)).all()
+    assert np.isnan(feed_tolerance(EU, "moisture", np.nan)).all()
 
 
 def test_the_declared_values_given_are_not_changed():
     declared = np.array([4.0, 10.0])
-    tolerance(EU, "crude_fat", declared)
+    feed_tolerance(EU, "crude_fat", declared)
     assert declared.tolist() == [4.0, 10.0]
 
 
 def test_an_unknown_law_is_refused_with_the_nearest():
     with pytest.raises(WrongUse) as refusal:
-        tolerance("eu_767_2009", "crude_fat", 10)
+        feed_tolerance("eu_767_2009", "crude_fat", 10)
     assert EU in refusal.value.cure
 
 
 def test_a_law_like_none_is_refused_with_all():
     with pytest.raises(WrongUse, match=r"There are: ec_152_2009_annex_vii, .*us_analytical_variations"):
-        tolerance("zzz", "crude_fat", 10)
+        feed_tolerance("zzz", "crude_fat", 10)
 
 
 def test_an_unknown_constituent_is_refused_with_the_nearest():
     with pytest.raises(WrongUse, match=r"sets no limit of 'crude_fiber'.*crude_fibre"):
-        tolerance(EU, "crude_fiber", 10)
+        feed_tolerance(EU, "crude_fiber", 10)
 
 
 def test_a_constituent_of_another_law_is_refused():
     with pytest.raises(WrongUse, match="fr_order_1989 sets no limit of 'moisture'"):
-        tolerance("fr_order_1989", "moisture", 10)
+        feed_tolerance("fr_order_1989", "moisture", 10)
 
 
 def test_an_unknown_animal_is_refused():
     with pytest.raises(WrongUse, match="there is no kind of animal 'pet'"):
-        tolerance(EU, "crude_fat", 10, "pet")
+        feed_tolerance(EU, "crude_fat", 10, "pet")
 
 
 def test_a_law_for_other_animals_is_refused():
     with pytest.raises(WrongUse, match="animal='non_food_producing'"):
-        tolerance("ec_95_10_dietetic", "energy_value", 16)
+        feed_tolerance("ec_95_10_dietetic", "energy_value", 16)
 
 
 def test_a_negative_declared_value_is_refused():
     with pytest.raises(WrongUse, match="negative: -2"):
-        tolerance(EU, "crude_fat", [3.0, np.nan, -2.0])
+        feed_tolerance(EU, "crude_fat", [3.0, np.nan, -2.0])
 
 
 def test_an_infinite_declared_value_is_refused():
     with pytest.raises(WrongUse, match="infinite"):
-        tolerance(EU, "energy_value", INF)
+        feed_tolerance(EU, "energy_value", INF)
 
 
 def test_more_than_all_of_the_feed_is_refused():
     with pytest.raises(WrongUse, match=r"180.*divided by 10"):
-        tolerance(EU, "crude_protein", 180)
+        feed_tolerance(EU, "crude_protein", 180)
 
 
 @pytest.mark.parametrize(

@@ -7,7 +7,8 @@ import energy
 
 NAMES = {
     "Assessment", "CatalogueProblem", "EnergyError", "FormulaProblem", "Problem", "Samples", "StructuralProblems",
-    "UnitProblem", "WrongUse", "__version__", "assess", "equations", "read_samples",
+    "UnitProblem", "WrongUse", "__version__", "assess", "assess_each", "equations", "feed_tolerance",
+    "read_samples",
 }  # fmt: skip
 
 

@@ -41,17 +41,15 @@ def board(assessment: Assessment) -> pd.DataFrame:
     table = assessment.verdicts
     if table.empty:
         return table
-    ge = table[table["stage"] == "GE"].set_index("sample_id")
+    ge = table[table["stage"] == "GE"].drop_duplicates("sample_id").set_index("sample_id")
     rest = table[table["stage"] != "GE"].drop_duplicates("sample_id").set_index("sample_id")
     found = ge[["food_name"]].copy()
     found.insert(0, "verdict", [word(v) for v in ge["verdict"]])
     main = rest.reindex(ge.index)
-    none = np.full(len(ge), np.nan)
+    only_ge = ~ge.index.isin(rest.index)
     for name in FIGURES:
-        found[name] = main.get(name, none)
-    lacking = found["bomb"].isna() & found["composition"].isna()
-    found.loc[lacking, ["bomb", "composition"]] = np.nan
-    found["stage"] = main.get("stage", "GE")
+        found[name] = np.where(only_ge, ge[name], main[name])
+    found["stage"] = np.where(only_ge, "GE", main["stage"])
     found["probable_cause"] = ge["probable_cause"]
     found["next_measurement"] = ge["next_measurement"]
     found["reason"] = ge["reason"]
@@ -61,7 +59,7 @@ def board(assessment: Assessment) -> pd.DataFrame:
 def counts(assessment: Assessment) -> str:
     """How many samples have each GE verdict, in words."""
     table = assessment.verdicts
-    found = table.loc[table["stage"] == "GE", "verdict"].value_counts()
+    found = table[table["stage"] == "GE"].drop_duplicates("sample_id")["verdict"].value_counts()
     parts = [f"{found[v]} {WORDS.get(v, v)}" for v in MARKS if v in found]
     n = int(found.sum())
     return f"{n} sample{'s' if n != 1 else ''}: {', '.join(parts)}"

@@ -296,8 +296,9 @@ def figure_table(a: Assessment, sample_id: str) -> pd.DataFrame:
             "stage": [STAGE_WORDS.get(s, s) for s in found["stage"]],
             "route": found["route"].astype(str),
             "system": [in_words(s) for s in found["system"]],
-            f"value, {a.shown.unit}": np.round(found["value"].astype(float), _digits(a)),
+            "value": np.round(found["value"].astype(float), _digits(a)),
             "u": np.round(found["u"].astype(float), _digits(a)),
+            "unit": found["unit"].astype(str),
             "state": [STATUS_WORDS[s] for s in found["status"]],
             "what was assumed, or is missing": [in_words(r) for r in found["reason"]],
             "source": found["source"].astype(str),
@@ -405,16 +406,37 @@ def _cells(column: str, cell: object) -> list[str]:
 def equation_list(table: pd.DataFrame) -> pd.DataFrame:
     """The catalogue's table as shown."""
     shown = table[["title", "stage", "route", "target", "source_words", "source", "id"]].copy()
+    shown["stage"] = [kind or stage for kind, stage in zip(table["kind"], table["stage"], strict=True)]
     shown["target"] = ["every species and use" if t.count(",") > 5 else t.replace("_", " ") for t in shown["target"]]
     return shown.rename(columns={"target": "species or use", "source_words": "how it is known"})
 
 
+#: signs of stages and kinds in typeset formulas
+SIGNS = {
+    "digestibility": "d_{E}", "organic_matter": "d_{OM}", "CH4E": r"\mathrm{CH_{4}E}", "other": "x",
+    "ME/DE": r"\mathrm{ME}/\mathrm{DE}", "efficiency": "k", "elements": r"\mathrm{GE}",
+    "AMEn": r"\mathrm{AME_{n}}", "TMEn": r"\mathrm{TME_{n}}", "NEL": r"\mathrm{NE_{L}}",
+    "NEm": r"\mathrm{NE_{m}}", "NEg": r"\mathrm{NE_{g}}", "NME": r"\mathrm{NME}",
+}  # fmt: skip
+
+
 def latex_line(system: System) -> str:
-    """The formula typeset, with its result's stage and unit."""
+    """The formula typeset, with its result's stage and unit; a chain as its steps, one line each."""
+    if not system.steps:
+        sign, formula = _sides(system)
+        return f"{sign} = {formula}"
+    lines = [_sides(reader.systems()[step]) for step in system.steps]
+    body = r" \\ ".join(f"{sign} &= {formula}" for sign, formula in lines)
+    return rf"\begin{{aligned}} {body} \end{{aligned}}"
+
+
+def _sides(system: System) -> tuple[str, str]:
+    """What a formula gives, and the formula with its unit."""
     unit = re.sub(r"([%&#_$])", r"\\\1", system.result_unit)
-    if system.result_basis not in ("", "none"):
-        unit += {"any": "", "as_is": " as is", "dry_matter": " DM"}.get(system.result_basis, "")
-    return rf"\mathrm{{{system.stage}}} = {system.formula.latex}\quad\text{{[{unit}]}}"
+    if system.stage not in ("digestibility", "other") and system.result_basis not in ("", "none"):
+        unit += {"any": "", "as_is": " as is", "dry_matter": " DM", "organic_matter": " OM"}[system.result_basis]
+    sign = SIGNS.get(system.kind or system.stage, rf"\mathrm{{{system.kind or system.stage}}}")
+    return sign, rf"{system.formula.latex}\quad\text{{[{unit}]}}"
 
 
 def fact_table(system: System, domain: str) -> pd.DataFrame:
@@ -424,13 +446,18 @@ def fact_table(system: System, domain: str) -> pd.DataFrame:
     factor = system.nitrogen_factor
     rows = [
         ("formula as text", system.formula.text),
+        ("steps", in_words(", then ".join(system.steps))),
         ("source", system.citation),
         ("place in it", system.locator),
         ("how it is known", SOURCE_STATUS[system.source_status]),
         ("law or code of", system.body if system.law else ""),
         ("domain", domain or "none printed"),
-        ("nitrogen to protein", "the food's own factor" if factor == "own" else f"factor {factor}"),
+        ("nitrogen to protein", {"own": "the food's own factor", "feed": "crude protein, nitrogen times 6.25"}.get(
+            str(factor), f"factor {factor}")),
         ("kJ and kcal", TWIN_WORDS[system.twin]),
+        ("r squared", "" if system.r2 is None else f"{system.r2:g}"),
+        ("the law's tolerance", "" if system.tolerance is None else
+         f"{system.tolerance.words} ({SOURCE_STATUS[system.tolerance.source_status]}: {system.tolerance.locator})"),
         ("spread about it", "" if system.residual_sd is None else f"residual SD {system.residual_sd:g} {system.result_unit}"),
         ("methods it needs", "; ".join(f"{c.replace('_', ' ')}: {' or '.join(m).replace('_', ' ')}"
                                        for c, m in system.requires_methods.items())),

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 import os
 import tempfile
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from energy.problems import WrongUse
 
@@ -46,6 +46,34 @@ def save(assessment: Assessment, path: str | Path) -> list[Path]:
     }
     _whole(goal, writers[ending])
     return [goal]
+
+
+def save_each(assessments: Sequence[Assessment], path: str | Path) -> list[Path]:
+    """Write several assessments by the path's ending: tables one below the other, documents side by side."""
+    goal = check_ending(path)
+    if len(assessments) == 1:
+        return save(assessments[0], goal)
+    if goal.suffix.lower() == ".html":
+        return [f for a in assessments for f in save(a, goal.with_name(f"{goal.stem}_{a.target}{goal.suffix}"))]
+    return save(Joined(assessments), goal)  # type: ignore[arg-type]
+
+
+class Joined:
+    """The tables of several assessments, one below the other."""
+
+    def __init__(self, assessments: Sequence[Assessment]):
+        self.assessments = assessments
+
+    def __getattr__(self, name: str) -> Any:
+        import pandas as pd
+
+        found = [getattr(a, name) for a in self.assessments]
+        if name == "inputs":
+            return lambda: pd.concat([f() for f in found], ignore_index=True)
+        if name == "problems":
+            return [problem for problems in found for problem in problems]
+        joined = pd.concat(found, ignore_index=True)
+        return joined.drop_duplicates() if name == "sources" else joined
 
 
 def _whole(goal: Path, write: Callable[[Path], None]) -> None:
