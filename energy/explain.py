@@ -216,6 +216,8 @@ class Facts:
     available_given: np.ndarray
     ether_extract: np.ndarray
     on_dry_matter: np.ndarray
+    may_hold_urea: np.ndarray  # a ruminant's feed whose urea was not determined
+    ash_of_dry_matter: np.ndarray
 
 
 @dataclass(frozen=True)
@@ -257,6 +259,15 @@ def heat(symbol: str) -> float:
     return value * found.scale
 
 
+@cache
+def feed_heat(symbol: str) -> float:
+    """A heat of ge_heats_feed in MJ/kg: hp protein, hn nitrogen-free extract, hur urea."""
+    found = systems()["ge_heats_feed"].symbols[symbol]
+    if found.constant is None:
+        raise KeyError(symbol)
+    return found.constant * found.scale
+
+
 def needed_by_difference(gap: float) -> tuple[float, float, float]:
     """kg/kg of moisture, fat, protein that would each alone make a gap in GE (MJ/kg), carbohydrate by difference."""
     return gap / heat("hc"), gap / (heat("hf") - heat("hc")), gap / (heat("hp") - heat("hc"))
@@ -265,6 +276,12 @@ def needed_by_difference(gap: float) -> tuple[float, float, float]:
 def _missing_fat(f: Facts) -> np.ndarray:
     """kg fat per kg that must sit in carbohydrate by difference instead."""
     return (f.measured - f.computed) / (heat("hf") - heat("hc"))
+
+
+def _urea(f: Facts) -> np.ndarray:
+    """kg urea per kg that must stand in crude protein (N x 6.25) instead: its protein burns, it does not."""
+    protein, rest, urea = (feed_heat(x) for x in ("hp", "hn", "hur"))
+    return (f.computed - f.measured) / (2.91541 * protein - 1.91541 * rest - urea)
 
 
 def _powder_moisture(f: Facts) -> np.ndarray:
@@ -315,6 +332,17 @@ HYPOTHESES = (
                "fat was extracted without acid hydrolysis: {amount:.1f} g of bound fat per 100 g, "
                "now inside carbohydrate by difference, would explain it",
                "repeat the fat determination with acid hydrolysis"),
+    Hypothesis("urea_as_protein", 0.7, _same_measured, _same_measured,
+               lambda f: f.may_hold_urea & (_urea(f) > 0.004) & (_urea(f) < 0.05),
+               lambda f: 100 * _urea(f),
+               "non-protein nitrogen counted as protein: {amount:.1f} g of urea per 100 g would explain it",
+               "determine urea or ammonia nitrogen and give it as urea or non-protein nitrogen"),
+    Hypothesis("high_ash", 0.75, _same_measured, _same_measured,
+               lambda f: (f.ash_of_dry_matter > 0.12) & (f.measured < f.computed) & (f.measured > 0.88 * f.computed),
+               lambda f: 100 * f.ash_of_dry_matter,
+               "ash is {amount:.1f} % of dry matter: a charge that did not burn out, or carbonate that took up heat, "
+               "would explain it",
+               "look for soot, repeat with a combustion aid of known heat, and determine carbonate in the ash"),
 )
 # fmt: on
 

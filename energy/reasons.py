@@ -23,6 +23,10 @@ if TYPE_CHECKING:
 
     from energy.assessment import Assessment
 
+#: who can use urea, and is fed it
+RUMINANTS = ("cattle", "dairy_cow", "sheep")
+#: crude protein of dry matter below which nobody adds urea to a feed (judgement of ours)
+UREA_FROM = 0.14
 STAGE_WORDS = {
     "GE": "gross energy", "DE": "digestible energy", "ME": "metabolizable energy", "NE": "net energy",
     "label": "label energy (not a metabolizable energy)", "digestibility": "digestibility", "UE": "energy in urine",
@@ -108,6 +112,10 @@ def causes(a: Assessment) -> tuple[np.ndarray, np.ndarray]:
         available_given=given,
         ether_extract=no if method is None else np.array([m == "ether_extract" for m in method]),
         on_dry_matter=no if basis is None else basis == BASIS_CODE["dry_matter"],
+        may_hold_urea=np.isnan(quantity_values(s, "urea"))
+        & (a.target in RUMINANTS)
+        & (quantity_values(s, "crude_protein") > UREA_FROM * quantity_values(s, "solids")),
+        ash_of_dry_matter=quantity_values(s, "ash") / quantity_values(s, "solids"),
     )
     return rank(facts, open_rows)
 

@@ -79,12 +79,12 @@ def test_the_sample_looked_at_is_kept_between_pages(app):
 
 
 def test_choices_are_kept_between_pages(app):
-    app.selectbox(key="unit").set_value("MJ/kg DM").run()
+    app.selectbox(key="unit_human").set_value("MJ/kg DM").run()
     app.switch_page("energy/pages/sample.py").run()
     assert "MJ/kg" in everything(app)
     app.switch_page("energy/pages/bench.py").run()
     assert not app.exception
-    assert app.selectbox(key="unit").value == "MJ/kg DM"
+    assert app.selectbox(key="unit_human").value == "MJ/kg DM"
 
 
 def test_an_uploaded_table_gets_its_board(app):
@@ -156,7 +156,7 @@ def test_the_unit_switch_shows_the_laws_other_sum(app):
     upload(app, b"sample_id,protein [g/100 g as is],fat [g/100 g as is],available carbohydrate [g/100 g as is],"
                 b"total dietary fibre [g/100 g as is],gross energy [kJ/100 g as is]\na,10,10,10,10,970\n")  # fmt: skip
     assert board(app)["by composition, kJ/100 g"].tolist() == [790.0]
-    app.selectbox(key="unit").set_value("kcal/100 g").run()
+    app.selectbox(key="unit_human").set_value("kcal/100 g").run()
     assert not app.exception
     assert board(app)["by composition, kcal/100 g"].tolist() == [190.0]
     assert not [c for c in board(app).columns if "kJ" in c]
@@ -186,7 +186,7 @@ def test_a_sample_shows_questions_partition_and_parts(app):
 
 def test_in_kilocalories_a_sample_shows_the_laws_own_sum(app):
     # demo sample 002 by hand: 9.6 x 4 + 2.4 x 9 + 39.6 x 4 + 7.1 x 2 = 232.6 kcal per 100 g; 982 / 4.184 would be 234.7
-    app.selectbox(key="unit").set_value("kcal/100 g").run()
+    app.selectbox(key="unit_human").set_value("kcal/100 g").run()
     app.session_state["sample"] = "002"
     app.switch_page("energy/pages/sample.py").run()
     assert not app.exception

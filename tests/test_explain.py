@@ -205,3 +205,40 @@ def test_what_each_determination_would_have_to_be_wrong_by():
     expected = (0.348 / 17.3636, 0.348 / (39.3296 - 17.3636), 0.348 / (23.6396 - 17.3636))
     assert found == pytest.approx(expected, rel=1e-6)
     assert [round(100 * x, 1) for x in found] == [2.0, 1.6, 5.5]
+
+
+RUMINANT = {"sample_id": "s", "crude protein [g/kg DM]": 250.0, "crude fat [g/kg DM]": 40.0,
+            "crude fibre [g/kg DM]": 90.0, "ash [g/kg DM]": 70.0}  # fmt: skip
+
+
+def feed(target, row):
+    return energy.assess(energy.read_samples(pd.DataFrame([row]), target=target))
+
+
+def test_urea_booked_as_protein_is_named_with_its_amount():
+    """30 g urea are 87.46 g of the protein: true GE = 162.54 x 23.9 + 40 x 39.8 + 90 x 20.1 + 607.46 x 17.5 + 30 x 10.52 kJ."""
+    true = (162.54 * 23.9 + 40 * 39.8 + 90 * 20.1 + 607.46 * 17.5 + 30 * 10.52) / 1000
+    a = feed("cattle", {**RUMINANT, "gross energy [MJ/kg DM]": true})
+    assert "3.0 g of urea per 100 g" in a.verdicts["probable_cause"][0]
+
+
+def test_a_determined_urea_is_no_suspect():
+    true = (162.54 * 23.9 + 40 * 39.8 + 90 * 20.1 + 607.46 * 17.5 + 30 * 10.52) / 1000
+    a = feed("cattle", {**RUMINANT, "urea [g/kg DM]": 30.0, "gross energy [MJ/kg DM]": true})
+    assert a.verdicts["measurement_part"][0] == pytest.approx(0, abs=1e-3)
+
+
+@pytest.mark.parametrize(("target", "protein"), [("growing_pig", 250.0), ("cattle", 90.0)])
+def test_nobody_suspects_urea_where_none_is_fed(target, protein):
+    row = {**RUMINANT, "crude protein [g/kg DM]": protein}
+    a = feed(target, {**row, "gross energy [MJ/kg DM]": 16.9})
+    assert "urea" not in a.verdicts["probable_cause"][0]
+
+
+def test_much_ash_is_named_where_the_bomb_is_low():
+    row = {"sample_id": "s", "crude protein [g/kg DM]": 120.0, "crude fat [g/kg DM]": 30.0,
+           "crude fibre [g/kg DM]": 250.0, "ash [g/kg DM]": 220.0}  # fmt: skip
+    computed = (120 * 23.9 + 30 * 39.8 + 250 * 20.1 + 380 * 17.5) / 1000
+    a = feed("cattle", {**row, "gross energy [MJ/kg DM]": 0.93 * computed})
+    assert "ash is 22.0 % of dry matter" in a.verdicts["probable_cause"][0]
+    assert "combustion aid" in a.verdicts["next_measurement"][0]

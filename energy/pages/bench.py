@@ -55,25 +55,35 @@ def loading() -> None:
 def choosing() -> None:
     """For whom, by which law, in which unit, within what limit."""
     one, two, three, four = st.columns([2, 3, 2, 2])
-    targets = screen.targets()
+    targets, named = screen.targets(), session.named()
+    if named and session.setting("target") not in named and "asked_target" not in st.session_state:
+        session.keep("target", named[0])  # a new table says for whom it is
     target = one.selectbox(
         "Species or use",
         list(targets),
         index=list(targets).index(session.setting("target")),
-        format_func=targets.__getitem__,
+        format_func=lambda t: f"{targets[t]}{' (in the table)' if t in named else ''}",
         key="target",
+        on_change=lambda: st.session_state.update(asked_target=True),
     )
+    if target != session.setting("target"):
+        session.keep("law", screen.first_law(target))
+        session.keep("unit", screen.units(target)[0])
     session.keep("target", target)
     laws = {"": "no law: the target's own systems", **screen.laws(target)}
     kept = session.setting("law") or ""
     law = two.selectbox(
-        "Label law",
+        "Label law" if target == "human" else "Law",
         list(laws),
         index=list(laws).index(kept) if kept in laws else 0,
         format_func=laws.__getitem__,
         key=f"law_{target}",
     )
-    unit = three.selectbox("Unit", screen.UNITS, index=screen.UNITS.index(session.setting("unit")), key="unit")
+    units = screen.units(target)
+    kept_unit = session.setting("unit")
+    unit = three.selectbox(
+        "Unit", units, index=units.index(kept_unit) if kept_unit in units else 0, key=f"unit_{target}"
+    )
     limit = four.text_input(
         "Practical limit",
         value=session.setting("limit") or "",

@@ -6,7 +6,8 @@ from typing import Any
 
 import streamlit as st
 
-from energy.assessment import Assessment, assess, demo_paths
+from energy.assessment import Assessment, assess, demo_paths, named_targets
+from energy.catalogue import tables
 from energy.intake import read_samples
 from energy.pages import drawing
 from energy.problems import EnergyError, StructuralProblems
@@ -40,7 +41,7 @@ def source() -> dict[str, Any]:
 def use(name: str, data: bytes, demo: bool = False) -> None:
     """Take another table; what was given for the old one is forgotten."""
     st.session_state["source"] = {"name": name, "data": data, "units": {}, "demo": demo}
-    for left_over in ("sample", "kept_basis", "kept_decimal", "basis", "decimal"):
+    for left_over in ("sample", "kept_basis", "kept_decimal", "basis", "decimal", "target", "asked_target"):
         st.session_state.pop(left_over, None)
 
 
@@ -58,6 +59,24 @@ def _assess(
 ) -> Assessment:
     samples = read_samples(data, units=dict(units), basis=basis, target=target, decimal=decimal, name=name)
     return assess(samples, law=law, unit=unit, limit=limit)
+
+
+@st.cache_data(max_entries=16, show_spinner=False)
+def _named(
+    name: str, data: bytes, units: tuple[tuple[str, str], ...], basis: str | None, decimal: str | None
+) -> list[str]:
+    try:
+        samples = read_samples(data, units=dict(units), basis=basis, target="none", decimal=decimal, name=name)
+    except EnergyError:
+        return []
+    return [t for t in named_targets(samples) if t in tables.targets()]
+
+
+def named() -> list[str]:
+    """The species or uses the table at hand names itself."""
+    table = source()
+    units = tuple(sorted(table["units"].items()))
+    return _named(table["name"], table["data"], units, setting("basis"), setting("decimal"))
 
 
 def setting(name: str) -> Any:

@@ -54,9 +54,19 @@ def targets() -> dict[str, str]:
     return {t: TARGET_WORDS.get(t, t.replace("_", " ")) for t in TARGETS if t in tables.targets()}
 
 
+def units(target: str) -> list[str]:
+    """Units to choose from, those of the target's users first."""
+    return list(dict.fromkeys([*tables.targets()[target]["units"], *UNITS]))
+
+
+def first_law(target: str) -> str | None:
+    """The law a target opens with: the European Union's for people, none for feeds (their own systems lead)."""
+    return "eu_1169_2011" if target == "human" else None
+
+
 def limit_hint(target: str) -> str:
     """The practical limit that holds when none is given."""
-    return f"{float(tables.targets()[target]['limit_act']):.0%} by default"
+    return f"{100 * float(tables.targets()[target]['limit_act']):g} % by default"
 
 
 @cache
