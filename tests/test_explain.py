@@ -1,5 +1,6 @@
 """Three breads, a sugar drink and planted faults, worked by hand."""
 
+import pandas as pd
 import pytest
 
 import energy
