@@ -40,7 +40,7 @@ def parser() -> argparse.ArgumentParser:
     listing.add_argument("--house", metavar="FILE", help="TOML file of the house's own equations")
     template = commands.add_parser("template", help="an empty table to fill in")
     template.add_argument("kind", choices=("samples", "long"))
-    commands.add_parser("demo", help=f"assess the invented demo foods; writes into ./{DEMO_FOLDER}/")
+    commands.add_parser("demo", help=f"assess the invented demo foods and feeds; writes into ./{DEMO_FOLDER}/")
     return top
 
 
@@ -173,20 +173,24 @@ def _template(options: argparse.Namespace) -> int:
 def _demo(options: argparse.Namespace) -> int:
     import shutil
 
-    from energy.assessment import assess, demo_paths
+    from energy.assessment import assess, assess_each, demo_paths
     from energy.report import board
-    from energy.report.tables import save
+    from energy.report.tables import save_each
 
     folder = _free_folder(Path(DEMO_FOLDER))
     folder.mkdir()
     _tell("Invented demo data: no real food, maker or laboratory.")
     for path in demo_paths():
         shutil.copy(path, folder / path.name)
-        assessment = assess(folder / path.name, target="human", law="eu_1169_2011", unit="kJ/100 g")
-        print(board.text(assessment), end="\n\n")
-        _problems(assessment)
+        if path.stem.startswith("foods"):
+            found = [assess(folder / path.name, target="human", law="eu_1169_2011", unit="kJ/100 g")]
+        else:
+            found = list(assess_each(folder / path.name).values())
+        for assessment in found:
+            print(board.text(assessment), end="\n\n")
+            _problems(assessment)
         for ending in (".csv", ".xlsx", ".html"):
-            save(assessment, folder / f"{path.stem}_evidence{ending}")
+            save_each(found, folder / f"{path.stem}_evidence{ending}")
     _tell(f"Evidence is in ./{folder}/: *_evidence.html to read, .xlsx and .csv to recompute.")
     for caution in board.CAUTIONS:
         _tell(caution)

@@ -246,8 +246,23 @@ def notes(a: Assessment, sample_id: str) -> list[str]:
             text = figure_reasons(a, a.blocks.row(s.id))[row]
             if text:
                 found.append(f"{s.id}: {text}")
-    found += [str(p) for p in a.samples.problems if p.sample_id == sample_id]
+    found += _elements(a, row)
+    found += [str(p) for p in a.problems if p.sample_id == sample_id]
     return found
+
+
+def _elements(a: Assessment, row: int) -> list[str]:
+    """The gross energy by the elements beside the measured one: a check that shares nothing with the proximate lab."""
+    b = a.blocks
+    said = []
+    for i, s in enumerate(a.choice.systems):
+        measured, value = b.value[b.row(b.pairs[0].bomb), row], b.value[i, row]
+        if s.kind == "elements" and np.isfinite(measured) and np.isfinite(value):
+            share = 100 * (value - measured) / measured
+            said.append(
+                f"{s.id}: the elements give a gross energy {share:+.1f} % from the measured one ({s.note.split('. ')[0]})"
+            )
+    return said
 
 
 def matrix_notes(samples: Samples, row: int) -> list[str]:

@@ -39,17 +39,34 @@ def loading() -> None:
                 title, list(choices), index=list(choices).index(kept), format_func=choices.__getitem__, key=name
             )
             session.keep(name, chosen or None)
-        with st.container(horizontal=True):
-            for path in demo_paths():
-                if st.button(f"Invented demo: {path.stem.replace('_', ' ')}", key=f"demo_{path.stem}"):
-                    session.use(path.name, path.read_bytes(), demo=True)
-                    st.rerun()
+        if not table["demo"] and st.button("Back to the invented demo", key="back_to_demo"):
+            path = demo_paths()[0]
+            session.use(path.name, path.read_bytes(), demo=True)
+            st.rerun()
     if table["units"]:
         said = "; ".join(f"{header}: {unit}" for header, unit in table["units"].items())
         st.caption(screen.plain(f"Units given by hand: {said}"))
         if st.button("Forget the units given by hand", key="forget"):
             table["units"].clear()
             st.rerun()
+
+
+def demonstration() -> None:
+    """That the data are invented, and which of the demo tables is shown."""
+    paths = {path.name: path for path in demo_paths()}
+    said, place = st.columns([3, 2], vertical_alignment="bottom")
+    said.info("Invented demo data: no real food, feed, maker or laboratory.", icon=":material/science:")
+    shown = session.source()["name"]
+    name = place.selectbox(
+        "Demo table",
+        list(paths),
+        index=list(paths).index(shown),
+        format_func=lambda n: n.removesuffix(".csv").replace("_", " "),
+        key="demo_table",
+    )
+    if name != shown:
+        session.use(name, paths[name].read_bytes(), demo=True)
+        st.rerun()
 
 
 def choosing() -> None:
@@ -186,7 +203,7 @@ def open_sample(sample: str) -> None:
 
 session.opening("Bench", "Does the bomb's energy meet the energy from composition, sample by sample?")
 if session.source()["demo"]:
-    st.info("Invented demo data: no real food, maker or laboratory.", icon=":material/science:")
+    demonstration()
 loading()
 choosing()
 assessment = session.current()

@@ -54,7 +54,7 @@ def choose(table: pd.DataFrame) -> str:
         st.session_state["entry"] = ticked
     st.session_state["ticked"] = ticked
     if st.session_state.get("entry") not in ids:
-        st.session_state.pop("entry", None)
+        st.session_state["entry"] = ids[0]
     titles = {i: f"{title}  ({i})" for i, title in zip(ids, table["title"], strict=True)}
     return st.selectbox("Entry (or tick a row)", ids, format_func=titles.__getitem__, key="entry")
 

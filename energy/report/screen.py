@@ -417,8 +417,18 @@ def equation_list(table: pd.DataFrame) -> pd.DataFrame:
     """The catalogue's table as shown."""
     shown = table[["title", "stage", "route", "target", "source_words", "source", "id"]].copy()
     shown["stage"] = [kind or stage for kind, stage in zip(table["kind"], table["stage"], strict=True)]
-    shown["target"] = ["every species and use" if t.count(",") > 5 else t.replace("_", " ") for t in shown["target"]]
+    shown["target"] = [_species(t.split(", ")) for t in shown["target"]]
     return shown.rename(columns={"target": "species or use", "source_words": "how it is known"})
+
+
+def _species(targets: list[str]) -> str:
+    """The species of an entry in words, short where they are many."""
+    eaters = set(TARGETS) - {"none"}
+    if eaters <= set(targets):
+        return "every species and use"
+    if eaters - {"human"} <= set(targets):
+        return "every animal"
+    return ", ".join(t.replace("_", " ") for t in targets)
 
 
 #: signs of stages and kinds in typeset formulas
@@ -436,7 +446,7 @@ def latex_line(system: System) -> str:
         sign, formula = _sides(system)
         return f"{sign} = {formula}"
     lines = [_sides(reader.systems()[step]) for step in system.steps]
-    body = r" \\ ".join(f"{sign} &= {formula}" for sign, formula in lines)
+    body = r" \\[6pt] ".join(f"{sign} &= {formula}" for sign, formula in lines)
     return rf"\begin{{aligned}} {body} \end{{aligned}}"
 
 
