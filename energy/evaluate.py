@@ -197,7 +197,7 @@ def _pair_roots(
     difference = algebra.subtract(bomb, composition)
     measurement = algebra.subtract(bomb, at_heats)
     model = resolver.model_variance(systems[index[pair.heats]])
-    gain = _gross_energy_gain(resolver, system)
+    gain = _gross_energy_gain(resolver, system, best)
     roots["u_difference", p] = algebra.apply("sqrt", _variance(difference))
     roots["at_heats", p] = at_heats
     roots["at_own", p] = at_own
@@ -205,11 +205,11 @@ def _pair_roots(
     roots["u_model", p] = algebra.apply("sqrt", algebra.multiply(algebra.power(gain, 2.0), model))
 
 
-def _gross_energy_gain(resolver: Resolver, system: System) -> Node:
-    """Slope of a bomb system's result with respect to gross energy, both in MJ/kg."""
+def _gross_energy_gain(resolver: Resolver, system: System, at: Node) -> Node:
+    """Slope of a bomb system's result with respect to gross energy, both in MJ/kg, where that is `at`."""
     probe = "gross energy"
     node = resolver.system(system, gross_energy=probe)
-    return algebra.slope(node, probe) if node is not None else 0.0
+    return algebra.substitute(algebra.slope(node, probe), {probe: at}) if node is not None else 0.0
 
 
 def _system_status(

@@ -10,7 +10,7 @@ from energy.samples import Samples
 
 @pytest.fixture(scope="module")
 def demo():
-    wide, certificate = demo_paths()
+    wide, certificate = demo_paths()[:2]
     return (energy.assess(wide, target="human", law="eu_1169_2011", unit="kcal/100 g"),
             energy.assess(certificate, target="human", law="eu_1169_2011", unit="kJ/100 g"))  # fmt: skip
 

@@ -253,6 +253,18 @@ HAY = {"crude protein [g/kg DM]": 100.0, "crude fat [g/kg DM]": 20.0, "crude fib
        "NFE [g/kg DM]": 500.0}  # fmt: skip
 
 
+def test_a_system_that_bends_in_gross_energy_is_compared_where_it_stands():
+    """NEL = 0.6 (1 + 0.004 (100 ME/GE - 57)) ME: dNEL/dGE = -0.24 ME^2/GE^2, so u of the heats enters by that slope."""
+    row = {"ash [g/kg DM]": 70.0, "crude protein [g/kg DM]": 180.0, "crude fat [g/kg DM]": 40.0, "starch [g/kg DM]": 300.0,
+           "ADFom [g/kg DM]": 100.0, "crude fibre [g/kg DM]": 80.0, "gas production [ml/200 mg DM]": 50.0,
+           "gross energy [MJ/kg DM]": 18.2}  # fmt: skip
+    a = assess("dairy_cow", "MJ/kg DM", "default", **row)
+    (p,) = [k for k, pair in enumerate(a.blocks.pairs) if pair.bomb == "futtmv_chain_nel_bomb"]
+    me, ge = 11.9242, (180 * 23.9 + 40 * 39.8 + 80 * 20.1 + 630 * 17.5) / 1000
+    u_heats = np.sqrt((0.18 * 0.4) ** 2 + (0.04 * 0.5) ** 2 + (0.08 * 1.47) ** 2 + (0.63 * 0.15) ** 2)
+    assert a.blocks.u_model[p, 0] == pytest.approx(0.24 * me**2 / ge**2 * u_heats, rel=1e-6)
+
+
 def test_horse_losses_of_2010_belong_to_the_equation_of_2014():
     """8.67 - 0.8 - 0.6 = 7.27 MJ/kg DM, as the ME equation itself."""
     a = assess("horse", "MJ/kg DM", **HAY)

@@ -37,19 +37,23 @@ def word(verdict: str) -> str:
 
 
 def board(assessment: Assessment) -> pd.DataFrame:
-    """One row per sample: its main comparison, with the GE verdict beside it. Energies in the unit shown."""
+    """One row per sample, with the GE verdict beside it, and the figures of its first comparison that has both routes.
+
+    Comparisons beyond GE come first; a sample with one route only shows the figure beyond GE that it has.
+    """
     table = assessment.verdicts
     if table.empty:
         return table
     ge = table[table["stage"] == "GE"].drop_duplicates("sample_id").set_index("sample_id")
-    rest = table[table["stage"] != "GE"].drop_duplicates("sample_id").set_index("sample_id")
+    whole = table["bomb"].notna() & table["composition"].notna()
+    in_order = table.assign(place=np.where(table["stage"] == "GE", 1, np.where(whole, 0, 2)))
+    in_order.loc[(table["stage"] == "GE") & ~whole, "place"] = 3
+    rest = in_order.sort_values("place", kind="stable").drop_duplicates("sample_id").set_index("sample_id")
     found = ge[["food_name"]].copy()
     found.insert(0, "verdict", [word(v) for v in ge["verdict"]])
     main = rest.reindex(ge.index)
-    only_ge = ~ge.index.isin(rest.index)
-    for name in FIGURES:
-        found[name] = np.where(only_ge, ge[name], main[name])
-    found["stage"] = np.where(only_ge, "GE", main["stage"])
+    for name in (*FIGURES, "stage"):
+        found[name] = main[name]
     found["probable_cause"] = ge["probable_cause"]
     found["next_measurement"] = ge["next_measurement"]
     found["reason"] = ge["reason"]
@@ -74,8 +78,8 @@ def text(assessment: Assessment, width: int = 118) -> str:
         + (f"law {assessment.law}" if assessment.law else "no law chosen") + f"; energies in {unit}",
         "Verdict: do bomb and composition describe the same material? The convention part is expected, not a fault.",
         "",
-        f"{'sample':<8}{'name':<30}{'verdict':<17}{'bomb':>8}{'compos.':>9}{'diff':>8}{'measur.':>9}{'heats':>7}{'conv.':>8}",
-        "-" * 104,
+        f"{'sample':<8}{'name':<30}{'verdict':<17}{'stage':<6}{'bomb':>8}{'compos.':>9}{'diff':>8}{'measur.':>9}{'heats':>7}{'conv.':>8}",
+        "-" * 110,
     ]  # fmt: skip
     digits = 0 if assessment.shown.scale < 0.5 else 2
     for row in map(_Row, found.to_dict(orient="records")):
@@ -83,13 +87,13 @@ def text(assessment: Assessment, width: int = 118) -> str:
                                                 row.heats_part, row.convention_part)]  # fmt: skip
         name = str(row.food_name or "")
         lines.append(
-            f"{row.sample_id!s:<8.8}{name:<30.29}{row.verdict:<17}{figures[0]:>8}{figures[1]:>9}{figures[2]:>8}"
+            f"{row.sample_id!s:<8.8}{name:<30.29}{row.verdict:<17}{row.stage:<6}{figures[0]:>8}{figures[1]:>9}{figures[2]:>8}"
             f"{figures[3]:>9}{figures[4]:>7}{figures[5]:>8}"
         )
         if row.probable_cause:
             lines.append(_wrap(f"probable cause: {row.probable_cause}", width))
             lines.append(_wrap(f"next: {row.next_measurement}", width))
-    lines += ["-" * 104, counts(assessment), "Marks: " + "  ".join(f"{m} {WORDS.get(v, v)}" for v, m in MARKS.items())]
+    lines += ["-" * 110, counts(assessment), "Marks: " + "  ".join(f"{m} {WORDS.get(v, v)}" for v, m in MARKS.items())]
     return "\n".join(lines)
 
 

@@ -1,0 +1,93 @@
+"""The invented feeds: every table reads, sound samples are not accused, and each planted fault is named."""
+
+import pytest
+
+import energy
+from energy.assessment import demo_paths
+from energy.catalogue.records import TARGETS
+
+FEEDS = {path.stem.removeprefix("feeds_"): path for path in demo_paths() if path.stem.startswith("feeds_")}
+ANIMALS = [t for t in TARGETS if t not in ("human", "none")]
+
+
+@pytest.fixture(scope="module")
+def demo():
+    return {target: energy.assess(path) for target, path in FEEDS.items()}
+
+
+def verdict(a, sample):
+    return a.verdicts[(a.verdicts["sample_id"] == sample) & (a.verdicts["stage"] == "GE")].iloc[0]
+
+
+def test_there_are_thirty_feeds_over_all_animals(demo):
+    assert sorted(FEEDS) == sorted(ANIMALS)
+    assert sum(len(a.samples) for a in demo.values()) >= 30
+
+
+def test_laboratories_write_in_their_own_units():
+    heads = "".join(path.read_text().splitlines()[0] for path in FEEDS.values())
+    for unit in ("g/kg DM", "% as fed", "MJ/kg", "kcal/kg", "Mcal/kg", "kcal/100 g", "kJ/g"):
+        assert unit in heads
+
+
+def test_every_table_says_it_is_invented():
+    assert all("invented" in line for path in FEEDS.values() for line in path.read_text().splitlines()[1:])
+
+
+@pytest.mark.parametrize(
+    ("target", "sample", "words"),
+    [
+        ("dog", "D04", "kilojoules entered as kilocalories"),
+        ("dog", "D05", "without acid hydrolysis"),
+        ("dog", "D06", "fits dry matter, not the material as it is"),
+        ("growing_pig", "P05", "ten times too small"),
+        ("duck", "U03", "6.0 g of moisture (too low)"),
+        ("cattle", "B03", "non-protein nitrogen counted as protein"),
+    ],
+)
+def test_a_planted_fault_is_named(demo, target, sample, words):
+    assert words in verdict(demo[target], sample)["probable_cause"]
+
+
+@pytest.mark.parametrize(
+    ("target", "sample", "words"),
+    [
+        ("cat", "C05", "residual moisture"),
+        ("growing_pig", "P04", "digestible energy of 16.9 MJ/kg is more than gross energy"),
+        ("cattle", "B05", "energy in methane is 16.9 % of gross energy"),
+        ("sheep", "O03", "the balance does not close"),
+        ("fish", "F04", "of 104 % is impossible"),
+    ],
+)
+def test_a_planted_impossibility_is_told(demo, target, sample, words):
+    told = [p.what for p in demo[target].problems if p.sample_id == sample]
+    assert any(words in what for what in told), told
+
+
+def test_the_wrong_starch_method_is_marked(demo):
+    found = demo["poultry"].results.set_index(["sample_id", "system"])
+    assert found.loc[("H03", "ec_152_2009_annex_vii"), "status"] == "method_mismatch"
+    assert found.loc[("H02", "ec_152_2009_annex_vii"), "status"] == "ok"
+
+
+def test_lost_nitrogen_puts_amen_above_ame(demo):
+    """H05: 8.4 g N lost per kg of dry matter are 0.28888 MJ at 34.39 kJ/g."""
+    a = energy.assess(FEEDS["poultry"], systems="all", unit="MJ/kg DM").results.set_index(["sample_id", "system"])
+    ame, amen = (a.loc[("H05", s), "value"] for s in ("trial_ame_total", "trial_chain_amen_total"))
+    assert amen - ame == pytest.approx(8.4 * 0.03439)
+
+
+SOUND = [("dog", "D01"), ("dog", "D07"), ("cat", "C03"), ("growing_pig", "P01"), ("sow", "S02"), ("poultry", "H01"),
+         ("duck", "U01"), ("cattle", "B02"), ("dairy_cow", "M02"), ("sheep", "O02"), ("horse", "E02"), ("rabbit", "R02"),
+         ("fish", "F01")]  # fmt: skip
+
+
+@pytest.mark.parametrize(("target", "sample"), SOUND)
+def test_a_sound_sample_is_not_accused(demo, target, sample):
+    row = verdict(demo[target], sample)
+    assert row["verdict"] in ("concordant", "inconclusive")
+    assert row["probable_cause"] == ""
+
+
+def test_elements_stand_beside_the_measured_gross_energy(demo):
+    assert any("the elements give a gross energy" in note for note in demo["rabbit"].notes("R01"))
