@@ -11,7 +11,7 @@ from energy import cells, silage, uncertainty
 from energy.catalogue.records import TARGETS
 from energy.catalogue.tables import food_groups
 from energy.problems import Problem, StructuralProblems
-from energy.quantities import dictionary, method_columns, normal_form
+from energy.quantities import DISPLAY_SCALE, dictionary, method_columns, normal_form
 from energy.samples import BASIS_CODE, Samples
 from energy.tabular import RawTable
 from energy.units import Unit
@@ -24,7 +24,7 @@ METHOD_WORDS = {
 }  # fmt: skip
 
 #: units in which problems tell a value
-UNIT_SHOWN = {"energy": "MJ/kg", "density": "g/ml", "mass": "kg", "heat": "MJ", "gas_yield": "ml/g"}
+UNIT_SHOWN = {"energy": "MJ/kg", "density": "g/ml", "mass": "kg", "heat": "MJ", "gas_yield": "ml/200 mg"}
 #: moisture above which a freeze-dried material was wet as it came: the powder is not the material
 WET = 0.15
 
@@ -121,8 +121,8 @@ class Table:
         for quantity, values in samples.columns.items():
             entry = dictionary()[quantity]
             low, high = entry.range
-            scale = 100 if entry.dimension in ("mass_fraction", "fraction") else 1
-            unit = UNIT_SHOWN.get(entry.dimension, "%" if scale == 100 else "")
+            scale = 1 / DISPLAY_SCALE[entry.dimension]
+            unit = UNIT_SHOWN.get(entry.dimension, "" if entry.dimension == "number" else "%")
             with np.errstate(invalid="ignore"):
                 impossible = ((values < 0) & (low >= 0)) | (
                     (values > 1.0000001) if scale == 100 and high <= 1 else np.zeros(len(values), dtype=bool)

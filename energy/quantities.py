@@ -34,7 +34,7 @@ DISPLAY_SCALE = {
     "number": 1.0,
     "mass": 1.0,
     "heat": 1.0,
-    "gas_yield": 1.0,
+    "gas_yield": 5.0,
 }
 
 

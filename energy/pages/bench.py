@@ -74,11 +74,12 @@ def choosing() -> None:
     one, two, three, four = st.columns([2, 3, 2, 2])
     targets, named = screen.targets(), session.named()
     if named and session.setting("target") not in named and "asked_target" not in st.session_state:
-        session.keep("target", named[0])  # a new table says for whom it is
+        st.session_state["target"] = named[0]  # a new table says for whom it is
+    elif "target" not in st.session_state:
+        st.session_state["target"] = session.setting("target")
     target = one.selectbox(
         "Species or use",
         list(targets),
-        index=list(targets).index(session.setting("target")),
         format_func=lambda t: f"{targets[t]}{' (in the table)' if t in named else ''}",
         key="target",
         on_change=lambda: st.session_state.update(asked_target=True),

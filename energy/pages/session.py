@@ -41,7 +41,7 @@ def source() -> dict[str, Any]:
 def use(name: str, data: bytes, demo: bool = False) -> None:
     """Take another table; what was given for the old one is forgotten."""
     st.session_state["source"] = {"name": name, "data": data, "units": {}, "demo": demo}
-    for left_over in ("sample", "kept_basis", "kept_decimal", "basis", "decimal", "target", "asked_target"):
+    for left_over in ("sample", "kept_basis", "kept_decimal", "basis", "decimal", "asked_target"):
         st.session_state.pop(left_over, None)
 
 

@@ -133,7 +133,7 @@ def board_table(a: Assessment, stage: str | None = None) -> pd.DataFrame:
         digits = 1 if name == "difference_percent" else _digits(a)
         table[title] = np.round(found[name].astype(float), digits) + 0.0
     lacking = found["verdict"].isin(["single_route", "not_computed"])
-    said = found["probable_cause"].where(~lacking, found["reason"])
+    said = found["probable_cause"].where(~lacking | (found["probable_cause"] != ""), found["reason"])
     table["probable cause, or what is missing"] = [in_words(str(text)) for text in said]
     table["to measure next"] = found["next_measurement"]
     return table
