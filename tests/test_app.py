@@ -260,3 +260,75 @@ def test_an_equation_search_without_a_hit_says_so(app):
     app.text_input(key="filter_text").set_value("no such thing").run()
     assert not app.exception
     assert any("No entry fits" in e.value for e in app.info)
+
+
+# ---- feeds ----------------------------------------------------------------------------------------------------
+
+
+@pytest.fixture
+def pigs(app):
+    app.selectbox(key="demo_table").set_value("feeds_growing_pig.csv").run()
+    assert not app.exception
+    return app
+
+
+def test_a_demo_of_feeds_is_taken_for_its_own_species_in_its_users_unit(pigs):
+    assert pigs.selectbox(key="target").value == "growing_pig"
+    assert pigs.selectbox(key="unit_growing_pig").value == "MJ/kg"
+    assert set(board(pigs)["sample"]) == {"P01", "P02", "P03", "P04", "P05", "P06"}
+
+
+def test_stages_of_feeds_are_counted_one_by_one(pigs):
+    said = everything(pigs)
+    for stage in ("Digestible energy: 6 samples", "Metabolizable energy: 6", "Net energy: 6", "Gross energy: 6"):
+        assert stage in said
+
+
+def test_an_impossible_trial_is_told_on_the_bench(pigs):
+    assert "digestible energy of 16.9 MJ/kg is more than gross energy" in everything(pigs)
+
+
+def test_a_feeds_sample_shows_every_loss(pigs):
+    pigs.switch_page("energy/pages/sample.py").run()
+    assert not pigs.exception
+    said = everything(pigs)
+    for step in ("energy in faeces", "energy in urine and gas", "heat increment", "net energy"):
+        assert step in said
+
+
+def test_another_species_than_the_tables_is_refused_with_the_cure(pigs):
+    pigs.selectbox(key="target").set_value("cat").run()
+    assert not pigs.exception
+    assert "No sample of the table is for cat" in everything(pigs)
+
+
+@pytest.mark.parametrize(
+    ("key", "value", "column"),
+    [("target", "rabbit", "species or use"), ("stage", "NE", "stage"), ("route", "loss", "route"),
+     ("source_words", "read at the source", "how it is known")],
+)  # fmt: skip
+def test_equations_are_narrowed(app, key, value, column):
+    app.switch_page("energy/pages/equations.py").run()
+    app.multiselect(key=f"filter_{key}").set_value([value]).run()
+    assert not app.exception
+    shown = app.dataframe[0].value[column]
+    if column == "stage":
+        assert set(shown) <= {"NE", "NEL", "NEm", "NEg", "NME"}
+    else:
+        assert all(value in cell or cell.startswith("every") for cell in shown)
+    assert 0 < len(shown) < 250
+
+
+def test_a_chain_is_typeset_step_by_step(app):
+    app.switch_page("energy/pages/equations.py").run()
+    app.selectbox(key="entry").set_value("nrc_2006_chain_cat_composition").run()
+    assert not app.exception
+    formula = str(app.get("latex")[0].value) if app.get("latex") else everything(app)
+    assert r"\begin{aligned}" in formula
+    assert formula.count("&=") == 4
+
+
+def test_a_domain_is_shown_with_its_unit(app):
+    app.switch_page("energy/pages/equations.py").run()
+    app.selectbox(key="entry").set_value("king_taverner_1975_de_ndf").run()
+    assert "NDF from 7.3 to 33.8 % DM" in everything(app)
