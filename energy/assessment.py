@@ -117,12 +117,14 @@ def assess_each(samples: Samples | str | Path | pd.DataFrame, **wishes: Any) -> 
     """
     batch = samples if isinstance(samples, Samples) else _read(samples, None)
     named = named_targets(batch)
-    empty = (
-        [] if not named else [str(i) for i, t in zip(batch.ids, batch.text["target"], strict=True) if not t or t != t]
-    )
-    if not named or empty:
-        what = f"No target is named for {', '.join(empty[:5])}." if empty else "The table names no target."
-        raise WrongUse(what, "Fill the column 'target', or give one target for all.")
+    if not named:
+        raise WrongUse("The table names no target.", "Fill the column 'target', or give one target for all.")
+    open_rows = [f"{i} ('{t}')" if t else str(i) for i, t in zip(batch.ids, batch.text["target"], strict=True)
+                 if t not in TARGETS]  # fmt: skip
+    if open_rows:
+        more = f" and {len(open_rows) - 10} more" if len(open_rows) > 10 else ""
+        raise WrongUse(f"No known target is named for {', '.join(open_rows[:10])}{more}.",
+                       f"Fill the column 'target' with one of: {', '.join(TARGETS)}; or give one target for all.")  # fmt: skip
     said = batch.text["target"].astype(str)
     return {t: assess(batch.take(np.flatnonzero(said == t)), target=t, **wishes) for t in named}
 

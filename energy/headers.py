@@ -100,8 +100,14 @@ def read_header(header: str, where: str, units: dict[str, str], basis: str | Non
     except UnitProblem as found:
         bare = basis_of(unit_text)
         what = f"{entry.title} has no unit, only a basis." if bare else f"the unit '{unit_text}': {found.what}"
+        plain_kinds = ("fraction", "number", "mass", "heat", "gas_yield")
+        cure = (
+            f"Write '{name} [{_example(entry.dimension, entry.basis)}]'."
+            if entry.dimension in plain_kinds
+            else found.cure
+        )
         return Meaning(header, kind, quantity, replicate, basis=bare,
-                       problem=_problem(header, where, what, found.cure, "unit"))  # fmt: skip
+                       problem=_problem(header, where, what, cure, "unit"))  # fmt: skip
     stated = entry.basis == "stated"
     if not stated and unit.basis not in (None, entry.basis):
         meant = {
@@ -122,7 +128,8 @@ def read_header(header: str, where: str, units: dict[str, str], basis: str | Non
 
 
 def _example(dimension: str, basis: str) -> str:
-    unit = {"energy": "kJ/100 g", "density": "g/ml", "fraction": "%"}.get(dimension, "g/100 g")
+    unit = {"energy": "kJ/100 g", "density": "g/ml", "fraction": "%", "number": "1", "mass": "kg", "heat": "kJ",
+            "gas_yield": "ml/200 mg"}.get(dimension, "g/100 g")  # fmt: skip
     return f"{unit} as is" if basis == "stated" else unit
 
 

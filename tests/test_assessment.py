@@ -1,6 +1,7 @@
 """The object users hold: columns, leading figures, units, wrong use, house files."""
 
 import numpy as np
+import pandas as pd
 import pytest
 
 import energy
@@ -283,3 +284,55 @@ def test_a_kilocalorie_sum_shown_in_joules_says_so():
         .iloc[0]
     )
     assert "1 kcal = 4.184 kJ" in found["reason"]
+
+
+# ---- a table for several eaters ---------------------------------------------------------------------------------
+
+MIXED = pd.DataFrame(
+    {
+        "sample_id": ["a", "b", "c", "d"],
+        "target": ["dog", "cat", "dog", "human"],
+        "moisture [%]": [8.0, 78.0, 76.0, 38.0],
+        "crude protein [% as is]": [25.0, 10.0, 9.0, 8.6],
+        "crude fat [% as is]": [14.0, 5.0, 6.0, 1.6],
+        "crude fibre [% as is]": [2.5, 0.4, 0.5, 1.0],
+        "ash [% as is]": [7.0, 2.0, 2.1, 1.8],
+        "gross energy [MJ/kg as is]": [19.1, 5.0, 5.3, 11.5],
+    }
+)
+
+
+def test_each_target_is_assessed_by_its_own_systems():
+    found = energy.assess_each(MIXED)
+    assert {t: list(a.samples.ids) for t, a in found.items()} == {"dog": ["a", "c"], "cat": ["b"], "human": ["d"]}
+    assert "nrc_2006_chain_cat_bomb" in set(found["cat"].results["system"])
+    assert "nrc_2006_chain_cat_bomb" not in set(found["dog"].results["system"])
+
+
+def test_a_sample_is_the_same_alone_and_among_others():
+    alone = energy.assess(MIXED[MIXED["target"] == "dog"]).results
+    pd.testing.assert_frame_equal(alone, energy.assess_each(MIXED)["dog"].results)
+
+
+def test_samples_for_another_target_are_left_out_and_told():
+    a = energy.assess(energy.read_samples(MIXED), target="dog")
+    assert list(a.samples.ids) == ["a", "c"]
+    assert any("1 for cat, 1 for human" in p.what for p in a.problems)
+
+
+def test_several_targets_need_a_choice():
+    with pytest.raises(energy.WrongUse, match="several targets") as found:
+        energy.assess(MIXED)
+    assert "assess_each" in found.value.cure
+
+
+@pytest.mark.parametrize("wrong", [None, "unicorn"])
+def test_every_sample_without_a_known_target_is_listed(wrong):
+    with pytest.raises(energy.WrongUse, match="No known target is named for b") as found:
+        energy.assess_each(MIXED.assign(target=["dog", wrong, "dog", "human"]))
+    assert "rabbit" in found.value.cure
+
+
+def test_nobody_of_that_kind_is_in_the_table():
+    with pytest.raises(energy.WrongUse, match="No sample of the table is for horse"):
+        energy.assess(MIXED, target="horse")

@@ -275,3 +275,20 @@ def test_an_unknown_food_group_is_told_with_near_ones():
 
 def test_moisture_on_dry_matter_is_not_taken_for_moisture():
     assert any("mean something else" in p for p in stops("sample_id,moisture [% DM]\na,10\n"))
+
+
+@pytest.mark.parametrize(
+    ("header", "cure"),
+    [("gas production [ml]", "[ml/200 mg]"), ("energy digestibility [g]", "[%]"), ("feed intake [%]", "[kg]"),
+     ("gross energy consumed [MJ/kg]", "[kJ]")],
+)  # fmt: skip
+def test_a_wrong_unit_of_a_feed_column_is_told_with_a_right_one(header, cure):
+    with pytest.raises(StructuralProblems) as found:
+        read_samples(pd.DataFrame({"sample_id": ["1"], header: [1.0]}), target="cattle")
+    assert cure in found.value.problems[0].cure
+
+
+def test_a_lower_bound_below_zero_lets_a_quantity_be_negative():
+    s = read_samples(pd.DataFrame({"sample_id": ["1"], "nitrogen retained [g/kg DM]": [-8.0]}), target="poultry")
+    assert s.columns["nitrogen_retained"][0] == pytest.approx(-0.008)
+    assert s.problems == []

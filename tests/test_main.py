@@ -113,3 +113,27 @@ def test_a_template_is_a_table_the_tool_reads(kind, capsys):
 def test_python_m_energy_runs():
     found = subprocess.run([sys.executable, "-m", "energy", "--help"], capture_output=True, text=True, check=True)
     assert "assess" in found.stdout
+
+
+def test_a_table_of_several_species_is_taken_species_by_species(tmp_path, capsys):
+    table = tmp_path / "mixed.csv"
+    table.write_text(
+        "sample_id,target,moisture [%],crude protein [% as is],crude fat [% as is],crude fibre [% as is],ash [% as is],"
+        "gross energy [MJ/kg as is]\na,dog,8,25,14,2.5,7,19.1\nb,cat,78,10,5,0.4,2,5.0\n"
+    )
+    assert main(["assess", str(table), "--out", str(tmp_path / "out.csv")]) == 0
+    printed = capsys.readouterr().out
+    assert "target dog" in printed
+    assert "target cat" in printed
+    assert set(pd.read_csv(tmp_path / "out.csv")["target"]) == {"dog", "cat"}
+    assert set(pd.read_csv(tmp_path / "out_verdicts.csv")["sample_id"]) == {"a", "b"}
+
+
+def test_documents_of_several_species_stand_side_by_side(tmp_path):
+    table = tmp_path / "mixed.csv"
+    table.write_text(
+        "sample_id,target,moisture [%],crude protein [% as is],crude fat [% as is],crude fibre [% as is],ash [% as is]\n"
+        "a,dog,8,25,14,2.5,7\nb,cat,78,10,5,0.4,2\n"
+    )
+    assert main(["assess", str(table), "--out", str(tmp_path / "out.html")]) == 0
+    assert sorted(p.name for p in tmp_path.glob("*.html")) == ["out_cat.html", "out_dog.html"]
