@@ -332,3 +332,19 @@ def test_a_domain_is_shown_with_its_unit(app):
     app.switch_page("energy/pages/equations.py").run()
     app.selectbox(key="entry").set_value("king_taverner_1975_de_ndf").run()
     assert "NDF from 7.3 to 33.8 % DM" in everything(app)
+
+
+def test_another_admissible_system_can_be_chosen(pigs):
+    pigs.selectbox(key="bomb_growing_pig").set_value("le_goff_noblet_2001_chain_growing_bomb").run()
+    pigs.selectbox(key="composition_growing_pig").set_value("noblet_perez_1993_de_cf").run()
+    assert not pigs.exception
+    assert "Digestible energy: 6 samples" in everything(pigs)
+    pigs.switch_page("energy/pages/sample.py").run()
+    assert "Le Goff and Noblet 2001" in everything(pigs)
+
+
+def test_systems_of_two_stages_are_not_compared_and_it_is_said(pigs):
+    pigs.selectbox(key="bomb_growing_pig").set_value("noblet_1994_chain_ne_bomb").run()
+    pigs.selectbox(key="composition_growing_pig").set_value("noblet_perez_1993_de_cf").run()
+    assert not pigs.exception
+    assert "Choose two systems of one stage" in everything(pigs)

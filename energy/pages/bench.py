@@ -87,6 +87,8 @@ def choosing() -> None:
     if target != session.setting("target"):
         session.keep("law", screen.first_law(target))
         session.keep("unit", screen.units(target)[0])
+        session.keep("bomb", None)
+        session.keep("composition", None)
     session.keep("target", target)
     laws = {"": "no law: the target's own systems", **screen.laws(target)}
     kept = session.setting("law") or ""
@@ -109,9 +111,29 @@ def choosing() -> None:
         help="A share such as 5 %, or an energy such as 100 kJ/100 g.",
         key="limit",
     )
+    choosing_systems(target)
     session.keep("law", law or None)
     session.keep("unit", unit)
     session.keep("limit", limit.strip() or None)
+
+
+def choosing_systems(target: str) -> None:
+    """Why these systems, and others of the catalogue that may stand in for them."""
+    with st.expander("Systems used, and others to choose"):
+        st.markdown(screen.plain(screen.systems_reason(target)))
+        for place, route, title in zip(
+            st.columns(2), ("bomb", "composition"), ("Bomb system", "Composition system"), strict=True
+        ):
+            options = screen.systems_to_choose(target, route)
+            kept = session.setting(route) or ""
+            chosen = place.selectbox(
+                title,
+                list(options),
+                index=list(options).index(kept) if kept in options else 0,
+                format_func=options.__getitem__,
+                key=f"{route}_{target}",
+            )
+            session.keep(route, chosen or None)
 
 
 def mapping() -> None:

@@ -16,7 +16,7 @@ from energy.report.screen import problem_rows, safe
 
 #: choices that outlive their widgets, and what they are until somebody chooses
 DEFAULTS: dict[str, Any] = {"target": "human", "law": "eu_1169_2011", "unit": "kJ/100 g", "limit": None,
-                            "basis": None, "decimal": None}  # fmt: skip
+                            "basis": None, "decimal": None, "bomb": None, "composition": None}  # fmt: skip
 
 #: so many problems are set in full
 FEW = 12
@@ -56,9 +56,11 @@ def _assess(
     law: str | None,
     unit: str,
     limit: str | None,
+    bomb: str | None,
+    composition: str | None,
 ) -> Assessment:
     samples = read_samples(data, units=dict(units), basis=basis, target=target, decimal=decimal, name=name)
-    return assess(samples, law=law, unit=unit, limit=limit)
+    return assess(samples, law=law, unit=unit, limit=limit, bomb_system=bomb, composition_system=composition)
 
 
 @st.cache_data(max_entries=16, show_spinner=False)
@@ -103,6 +105,8 @@ def current() -> Assessment | None:
             setting("law"),
             setting("unit"),
             setting("limit"),
+            setting("bomb"),
+            setting("composition"),
         )
         return found
     except StructuralProblems as problems:

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from energy import __version__
+from energy.catalogue.tables import targets
 from energy.report.board import CAUTIONS, FIGURES, board, counts
 from energy.report.tables import problem_table
 
@@ -41,7 +42,8 @@ def document(assessment: Assessment) -> str:
         f"<style>{_STYLE}</style></head><body><h1>Energy evidence</h1>",
         f"<p>{escape(counts(a))}. Target {escape(a.target)}; law {escape(a.law or 'none chosen')}; "
         f"energies in {escape(a.shown.unit)}, {escape(a.shown.basis.replace('_', ' '))}; "
-        f"intervals: value &plusmn; {a.coverage:g} u; practical limit: {escape(a.choice.limit.reason)}.</p>",
+        f"intervals: value &plusmn; {a.coverage:g} u; practical limit: {escape(a.choice.limit.reason)}. Systems: "
+        f"{escape(str(targets()[a.target]['systems_reason']))}.</p>",
         f"<p class='quiet'>Made {datetime.date.today().isoformat()} by Energy Concordance {escape(__version__)} from "
         f"{escape(a.samples.source or 'a table')}.</p>",
         "<h2>Board of verdicts</h2>", _table(_board(found, a)),
@@ -80,7 +82,8 @@ def _sample(a: Assessment, identity: str) -> str:
 
 def _board(found: pd.DataFrame, a: Assessment) -> pd.DataFrame:
     """The board rounded as it is read; every digit stands in the tables of the samples and in the workbook."""
-    table = found.drop(columns=["reason", "next_measurement", "stage"]).copy()
+    table = found.drop(columns=["reason", "next_measurement"]).copy()
+    table.insert(3, "stage of the figures", table.pop("stage"))
     numbers = list(FIGURES)
     table[numbers] = table[numbers].astype(float).round(1 if a.shown.scale < 0.5 else 3) + 0.0
     table["verdict"] = table["verdict"].str.replace(" ", "\u00a0")

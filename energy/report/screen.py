@@ -12,6 +12,7 @@ import numpy as np
 
 from energy.catalogue import reader, tables
 from energy.catalogue.records import SOURCE_STATUS, TARGETS, System
+from energy.choice import LED
 from energy.headers import Meaning
 from energy.quantities import dictionary
 from energy.reasons import STAGE_WORDS
@@ -62,6 +63,23 @@ def units(target: str) -> list[str]:
 def first_law(target: str) -> str | None:
     """The law a target opens with: the European Union's for people, none for feeds (their own systems lead)."""
     return "eu_1169_2011" if target == "human" else None
+
+
+def systems_reason(target: str) -> str:
+    """Why the target's systems are what they are."""
+    return _sentence(str(tables.targets()[target]["systems_reason"]))
+
+
+def systems_to_choose(target: str, route: str) -> dict[str, str]:
+    """id -> title of the systems of a route that may stand in for the target's own; '' for those."""
+    found = {s.id: s.title for s in reader.systems().values() if target in s.targets and s.route == route
+             and s.stage in LED and s.stage != "GE" and s.twin_of is None}  # fmt: skip
+    if route == "bomb":  # a comparison needs a system that takes the measured gross energy
+        takes = {
+            s.id for s in reader.systems().values() if any(x.quantity == "gross_energy" for x in s.inputs.values())
+        }
+        found = {i: t for i, t in found.items() if i in takes}
+    return {"": "the target's own", **dict(sorted(found.items(), key=lambda item: item[1]))}
 
 
 def limit_hint(target: str) -> str:
