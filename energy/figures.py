@@ -152,6 +152,12 @@ def _missing_words(samples: Samples, resolver: Resolver, system: System) -> str:
     ]
     if not lacking:
         return "cannot be computed from what is given"
+    working = resolver.signature.working
+    for symbol in system.inputs.values():
+        stated = resolver.stated.get(str(symbol.quantity))
+        if stated not in (None, working) and quantity_title(str(symbol.quantity)) in lacking:
+            basis, goal = stated.replace("_", " "), working.replace("_", " ")
+            return f"needs dry matter: {quantity_title(str(symbol.quantity))} is given per {basis}, the batch stands on {goal}"
     other = [words for needed, given, words in NOT_THE_SAME
              if quantity_title(needed) in lacking and given in resolver.columns]  # fmt: skip
     return "; ".join([f"needs {', '.join(dict.fromkeys(lacking))}: not given, nor derivable on this basis", *other])

@@ -1,6 +1,7 @@
 """Blocks of value, u and status. Second route for u: the package `uncertainties`."""
 
 import numpy as np
+import pandas as pd
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
@@ -291,3 +292,14 @@ def test_the_hand_written_numpy_of_the_benchmark_says_the_same():
     module = importlib.util.module_from_spec(spec)
     spec.loader.exec_module(module)
     module.agree(module.batch(200))
+
+
+def test_a_row_without_its_dry_matter_in_a_batch_that_knows_it_is_told_what_to_add():
+    rows = [{"sample_id": i, "dry matter [%]": d, "crude protein [g/kg DM]": 100.0, "crude fat [g/kg DM]": 20.0,
+             "crude fibre [g/kg DM]": 300.0, "NFE [g/kg DM]": 500.0} for i, d in (("a", 88.0), ("b", None))]  # fmt: skip
+    found = energy.assess(energy.read_samples(pd.DataFrame(rows), target="horse")).results.set_index(
+        ["sample_id", "system"]
+    )
+    assert found.loc[("a", "ge_heats_feed"), "status"] == "ok"
+    reason = found.loc[("b", "ge_heats_feed"), "reason"]
+    assert reason.startswith("needs dry matter: protein is given per dry matter, the batch stands on as is")
