@@ -64,18 +64,31 @@ EQUATIONS = {
                            "R squared 0.342"),
     "song_2025_ge_cp_ee_ash": (("crude_protein", "crude_fat", "ash"),
                                lambda p, f, a: 4.184e-3 * (4341 + 1100 * p + 5400 * f - 2400 * a), "R squared 0.372"),
+    # sugars are printed in none of these rows; the term for them counts above 80 g per kg only
+    "cvb_vanes_1978_ge": (("crude_protein", "crude_fat", "crude_fibre", "ash"),
+                          lambda p, f, c, a: 24.14 * p + 36.57 * f + 20.92 * c + 16.99 * (1 - p - f - c - a),
+                          "none printed"),
+    # printed for complete fish feeds; here on every feed that has its inputs
+    "nrc_2011_ge_fish": (("crude_protein", "crude_fat", "ash"),
+                         lambda p, f, a: 23.6 * p + 39.5 * f + 17.2 * (1 - p - f - a), "none printed"),
+    "ge_heats_feed": (("crude_protein", "crude_fat", "crude_fibre", "ash"),
+                      lambda p, f, c, a: 23.9 * p + 39.8 * f + 17.5 * (1 - p - f - a) + (20.1 - 17.5) * np.nan_to_num(c),
+                      "root mean square 1.02 % on the 34 rows of this file with crude fibre, from which its u was set"),
 }  # fmt: skip
+#: what a row may lack: crude fibre then stays inside the nitrogen-free extract
+MAY_LACK = {"ge_heats_feed": {"crude_fibre"}}
 #: median and 95th percentile of |measured - computed| in % of the computed, by the formulas above on the file's rows
 SPREAD = {
     "gfe_1995_ge": (14, 1.02, 2.23), "schiemann_1971_ge_kcal": (14, 1.00, 2.42), "maff_1984_ge": (14, 1.33, 3.37),
     "sauvant_2004_ge": (14, 1.25, 2.88), "ewan_1989_ge": (37, 2.59, 5.96), "song_2025_ge_cp_ee": (57, 2.26, 7.35),
-    "song_2025_ge_cp_ee_ash": (37, 3.30, 6.93),
+    "song_2025_ge_cp_ee_ash": (37, 3.30, 6.93), "cvb_vanes_1978_ge": (14, 1.18, 3.76),
+    "nrc_2011_ge_fish": (37, 2.88, 6.16), "ge_heats_feed": (37, 1.49, 4.84),
 }  # fmt: skip
 
 
 def by_hand(identity):
     need, formula, _ = EQUATIONS[identity]
-    columns, measured = table(need, need)
+    columns, measured = table(need, set(need) - MAY_LACK.get(identity, set()))
     computed = formula(*(columns[n] for n in need))
     return columns, measured, computed
 
@@ -116,13 +129,15 @@ def test_fish_diets_by_the_factors_of_nrc_2011():
 # ---- tables whose basis or print is wrong: the tool must notice -------------------------------------------------
 
 
-def assess(row, basis, target):
-    """A row as a user would hand it in, all on one basis."""
+def assess(row, basis, target, energy_basis=None, u=0.06):
+    """A row as a user would hand it in, all on one basis unless the energy has its own."""
+    energy_basis = energy_basis or basis
     names = {"crude_protein": "crude protein", "crude_fat": "crude fat", "crude_fibre": "crude fibre", "ash": "ash"}
     given = {f"{words} [g/kg {basis}]": number(row, f"{n}_g_per_kg") for n, words in names.items()
              if np.isfinite(number(row, f"{n}_g_per_kg"))}  # fmt: skip
-    given |= {"sample_id": row["id"], f"gross energy [MJ/kg {basis}]": number(row, "ge_mj_per_kg")}
-    given |= {"dry matter [g/kg]": number(row, "dry_matter_g_per_kg"), f"u(gross energy) [MJ/kg {basis}]": 0.06}
+    given |= {"sample_id": row["id"], f"gross energy [MJ/kg {energy_basis}]": number(row, "ge_mj_per_kg")}
+    given |= {"dry matter [g/kg]": number(row, "dry_matter_g_per_kg")}
+    given |= {} if u is None else {f"u(gross energy) [MJ/kg {energy_basis}]": u}
     return energy.assess(energy.read_samples(pd.DataFrame([given]), target=target)).verdicts.iloc[0]
 
 
@@ -132,6 +147,15 @@ def test_an_air_dry_composition_beside_a_dry_matter_energy_is_noticed(row):
     found = assess(row, "as is", "sheep")
     assert found["verdict"] == "discordant"
     assert "fits dry matter, not the material as it is" in found["probable_cause"]
+
+
+@pytest.mark.parametrize("row", [r for r in FEEDS if r["id"] in UNCERTAIN], ids=lambda r: r["id"])
+def test_the_right_basis_closes_the_gap(row):
+    """The same diets with the energy per kg of dry matter: inside the limit, where the printed table lies beyond it."""
+    wrong, right = assess(row, "as is", "sheep"), assess(row, "as is", "sheep", energy_basis="DM")
+    assert wrong["measurement_part"] > wrong["limit_upper"]
+    assert abs(right["measurement_part"]) < right["limit_upper"]
+    assert right["verdict"] != "discordant"
 
 
 AIR_DRY = [r for r in FEEDS if r["id"].startswith("shu2018")]
@@ -145,6 +169,38 @@ def test_a_table_headed_dry_matter_that_is_air_dry_is_noticed(row):
     assert wrong["probable_cause"] != ""
     assert abs(right["measurement_part"] / right["composition"]) < 0.016
     assert right["verdict"] != "discordant"
+
+
+def test_wrong_bases_are_noticed_with_the_uncertainty_between_laboratories():
+    """No u given: 1.29 % of GE (Bourdillon et al. 1990). All six diets are told; of the gluten feeds one stays open."""
+    diets = [assess(r, "as is", "sheep", u=None)["verdict"] for r in FEEDS if r["id"] in UNCERTAIN]
+    feeds = {r["id"]: assess(r, "DM", "poultry", u=None)["verdict"] for r in AIR_DRY}
+    assert set(diets) == {"discordant"}
+    assert {i for i, verdict in feeds.items() if verdict != "discordant"} == {"shu2018_cgf_10"}
+
+
+SHEEP_DIETS = [r for r in FEEDS if r["id"].startswith("zhao2017")]
+
+
+def test_a_misprint_inside_the_limit_is_not_noticed():
+    """Zhao et al. 2017, diet PV: 17.27 printed, faeces and digestible energy add up to 17.66 MJ/kg DM.
+
+    The misprint is 2.2 %, the limit 3 %; and without crude fibre the heats are low, which hides it. Known limit.
+    """
+    (row,) = [r for r in SHEEP_DIETS if r["id"] in MISPRINTED]
+    as_printed, mended = assess(row, "DM", "sheep"), assess({**row, "ge_mj_per_kg": "17.66"}, "DM", "sheep")
+    assert as_printed["verdict"] == "concordant"
+    assert mended["difference"] - as_printed["difference"] == pytest.approx((17.66 - 17.27) * 0.9225, abs=1e-6)
+    assert mended["difference"] < mended["limit_upper"]
+
+
+def test_the_misprinted_diet_is_the_lowest_of_its_table():
+    """The ten other diets lie 0.6 to 4.5 % above the heats without crude fibre, 23.9, 39.8 and 17.5 kJ/g; it does not."""
+    found = {r["id"]: assess(r, "DM", "sheep") for r in SHEEP_DIETS}
+    percent = {i: 100 * v["measurement_part"] / v["composition"] for i, v in found.items()}
+    misprinted = percent.pop("zhao2017_sheepdiet_PV")
+    assert abs(misprinted) < 0.1
+    assert all(0.5 < p < 4.5 for p in percent.values())
 
 
 # ---- elements ---------------------------------------------------------------------------------------------------
@@ -188,8 +244,9 @@ def test_by_plain_arithmetic():
 #: row: (sample, why it is probably a keying error): more than 20 % off by an equation that is 2.7 % off in the median
 KEYING_ERRORS = {
     28: "hydrogen 11.55 %, twice that of any wood", 58: "hydrogen 0.03 %", 99: "oxygen and heat do not belong together",
-    146: "carbon 19.12 % in a plant", 221: "carbon 14.61 and oxygen 81.8 % exchanged or mistyped",
-    233: "carbon 97.18 % and no oxygen", 329: "oxygen 73.8 %", 395: "oxygen 70.05 %", 477: "hydrogen 0.68 %",
+    146: "carbon 19.12 % in a plant", 221: "carbon 14.61 %, oxygen 81.8 % in oak: exchanged they still give 29.0 and not 17.2 MJ/kg",
+    233: "carbon 97.18 %, no oxygen in wood: more carbon than charcoal at the heat of wood",
+    329: "hydrogen 0.27 %, oxygen 73.8 % as the rest to 100: more oxygen than cellulose (49 %) or sugars (53 %) hold", 395: "oxygen 70.05 %", 477: "hydrogen 0.68 %",
     493: "oxygen 28.3 % with carbon 36.5 % leaves a third unexplained",
 }  # fmt: skip
 

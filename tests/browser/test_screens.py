@@ -128,3 +128,28 @@ def test_evidence_can_be_taken_away(page):
     with page.expect_download(timeout=60_000) as download:
         page.get_by_role("button", name="Evidence (HTML)").click()
     assert "Energy evidence" in Path(download.value.path()).read_text(encoding="utf-8")
+
+
+def test_a_demo_of_feeds_from_the_board_to_every_loss(page, tmp_path):
+    page.get_by_role("combobox", name="Demo table").click()
+    page.get_by_role("option", name="feeds growing pig", exact=True).click()
+    expect(page.get_by_text("Net energy: 6 samples").first).to_be_visible(timeout=60_000)
+    expect(page.get_by_role("combobox", name="Species or use")).to_have_value("growing pig (in the table)")
+    fits(page, tmp_path, "feeds")
+    page.get_by_role("link", name="Sample", exact=True).click()
+    ready(page, "Sample")
+    bomb = page.get_by_test_id("stTable").nth(0)
+    for step in ("energy in faeces", "energy in urine and gas", "heat increment", "net energy"):
+        expect(bomb.get_by_role("row", name=step, exact=False).first).to_be_visible(timeout=60_000)
+    fits(page, tmp_path, "feed_sample")
+
+
+def test_a_chain_is_typeset_one_step_a_line(page, tmp_path):
+    page.get_by_role("link", name="Equations", exact=True).click()
+    ready(page, "Equations")
+    page.get_by_label("Title, source, country or id holds").fill("nrc_2006_chain_cat_composition")
+    page.keyboard.press("Enter")
+    expect(page.get_by_text("1 entry", exact=True)).to_be_visible(timeout=60_000)
+    expect(page.locator(".katex").first).to_contain_text("87.9")
+    expect(page.get_by_role("row", name="steps", exact=False).first).to_be_visible()
+    fits(page, tmp_path, "chain")
