@@ -18,6 +18,7 @@ from energy import algebra
 from energy.algebra import Node
 from energy.catalogue.reader import derived_rules
 from energy.catalogue.records import System
+from energy.quantities import dictionary
 from energy.resolve import Parameter, Resolver, Signature, signatures
 from energy.samples import Samples
 
@@ -370,7 +371,7 @@ def _leaf(samples: Samples, name: str) -> np.ndarray | None:
     if name.startswith("U:"):
         column = name[2:].removesuffix("?")
         array = samples.u.get(column, np.full(len(samples), np.nan))
-        return _filled(samples, "U:" + column, array, 0.0) if name.endswith("?") else array
+        return _filled(samples, "U:" + column, array, dictionary()[column].absent_u) if name.endswith("?") else array
     if name.endswith("?"):
         column = name[:-1]
         return _filled(samples, column, samples.columns[column], 6.25 if column == "nitrogen_factor" else 0.0)

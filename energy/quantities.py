@@ -44,7 +44,8 @@ class Quantity:
 
     dimension : mass_fraction, fraction, energy (per mass), density, number, mass, heat or gas_yield.
     basis : "stated" (the table must say it) or the one the quantity has by its meaning.
-    range : plausible bounds in internal units. default_u : (absolute, relative) in internal units.
+    range : plausible bounds in internal units. default_u : (absolute, relative) in internal units. absent_u : standard
+    uncertainty of a value that is not given and therefore counted as zero.
     """
 
     name: str
@@ -60,6 +61,7 @@ class Quantity:
     default_u: tuple[float, float] | None = None
     default_u_source: str = ""
     default_u_status: str = ""
+    absent_u: float = 0.0
     note: str = ""
     header_implies: dict[str, str] = field(default_factory=dict)
 
@@ -98,6 +100,7 @@ def _quantity(name: str, entry: dict[str, Any], shared: dict[str, Any]) -> Quant
         default_u=(default[0] * scale, default[1]) if default else None,
         default_u_source=source,
         default_u_status=status,
+        absent_u=float(entry.get("absent_u", 0.0)) * scale,
         note=entry.get("note", ""),
         header_implies=dict(entry.get("header_implies", {})),
     )

@@ -18,6 +18,7 @@ from energy.algebra import Node, add, multiply, power, scale, slope, substitute
 from energy.catalogue.reader import derived_rules
 from energy.catalogue.records import Symbol, System
 from energy.catalogue.tables import food_groups, table
+from energy.quantities import dictionary
 from energy.samples import BASES, Samples
 
 ASSUMED_NITROGEN_FACTOR = 6.25
@@ -364,7 +365,7 @@ class Resolver:
         return bases.convert(node, self._dry(system.result_basis), self._dry(self.signature.working))
 
     def model_variance(self, system: System) -> Node:
-        """Variance of the result from the uncertainty of the published factors or heats themselves."""
+        """Variance of the result from the published factors or heats themselves, and from what was counted as zero."""
         values: dict[str, Node] = {}
         for name, symbol in system.inputs.items():
             node = self.symbol(symbol, system)
@@ -373,11 +374,19 @@ class Resolver:
             values[name] = node
         terms: list[Node] = []
         for name, symbol in system.inputs.items():
-            if symbol.quantity is not None or not (symbol.u or symbol.fallback_u):
+            variance = self._absent_variance(symbol) if symbol.quantity else self._symbol_variance(symbol)
+            if variance == 0.0:
                 continue
             effect = multiply(system.result_scale, substitute(slope(system.formula.node, name), values))
-            terms.append(multiply(power(effect, 2.0), self._symbol_variance(symbol)))
+            terms.append(multiply(power(effect, 2.0), variance))
         return add(*terms) if terms else 0.0
+
+    def _absent_variance(self, symbol: Symbol) -> float:
+        """Of a quantity counted as zero because its column is not there; 0 where absence is certain enough."""
+        known = dictionary().get(str(symbol.quantity))
+        if known is None or not known.absent_u or not self._gone(known.name):
+            return 0.0
+        return float((known.absent_u / symbol.scale) ** 2)
 
     def _symbol_variance(self, symbol: Symbol) -> Node:
         if symbol.constant is not None or symbol.slug is not None:

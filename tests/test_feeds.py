@@ -329,6 +329,29 @@ def test_limestone_takes_heat_up():
     assert ge_of(**{"limestone [g/kg DM]": 30.0}) - ge_of() == pytest.approx(-0.03 * 0.9)
 
 
+def test_crude_fibre_that_nobody_determined_widens_the_uncertainty():
+    """Counted as 0 with u = 8 g per 100 g of dry matter: 0.08 x (20.1 - 17.5) = 0.208 MJ/kg beside that of the heats."""
+    row = {
+        "crude protein [g/kg DM]": 200.0,
+        "crude fat [g/kg DM]": 40.0,
+        "ash [g/kg DM]": 70.0,
+        "gross energy [MJ/kg DM]": 18.2,
+    }
+    a = assess("cattle", "MJ/kg DM", "default", **row)
+    heats = np.sqrt((0.2 * 0.4) ** 2 + (0.04 * 0.5) ** 2 + (0.69 * 0.15) ** 2)
+    assert a.blocks.u_model[0, 0] == pytest.approx(np.hypot(heats, 0.08 * (20.1 - 17.5)), rel=1e-6)
+
+
+def test_the_same_in_a_row_of_a_table_that_has_the_column():
+    rows = [{"sample_id": i, "crude protein [g/kg DM]": 200.0, "crude fat [g/kg DM]": 40.0, "ash [g/kg DM]": 70.0,
+             "gross energy [MJ/kg DM]": 18.2, "crude fibre [g/kg DM]": c} for i, c in (("a", 80.0), ("b", None))]  # fmt: skip
+    a = energy.assess(energy.read_samples(pd.DataFrame(rows), target="cattle"))
+    b = a.blocks
+    widened = b.u_measurement[0, 1] ** 2 - (0.08 * (20.1 - 17.5)) ** 2
+    assert widened > 0
+    assert b.u[b.row("ge_heats_feed"), 1] > b.u[b.row("ge_heats_feed"), 0]
+
+
 # ---- misprints and tables that cannot be ----------------------------------------------------------------------
 
 
