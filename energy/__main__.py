@@ -40,6 +40,7 @@ def parser() -> argparse.ArgumentParser:
     listing.add_argument("--house", metavar="FILE", help="TOML file of the house's own equations")
     template = commands.add_parser("template", help="an empty table to fill in")
     template.add_argument("kind", choices=("samples", "long"))
+    template.add_argument("--target", help="an animal's name gives the columns of a feed laboratory")
     commands.add_parser("demo", help=f"assess the invented demo foods and feeds; writes into ./{DEMO_FOLDER}/")
     return top
 
@@ -146,7 +147,7 @@ def _equations(options: argparse.Namespace) -> int:
     table = equations(options.target, options.stage, options.route, house=options.house)
     if options.id is None:
         for row in table.itertuples(index=False):
-            print(f"{row.id:<42}{row.stage:<7}{row.route:<13}{row.source_words:<46.45}{row.title}")
+            print(f"{row.id:<44}{str(row.kind or row.stage):<15}{row.route:<13}{row.source_words:<46.45}{row.title}")
         return 0
     found = table[table["id"] == options.id]
     if found.empty:
@@ -158,7 +159,21 @@ def _equations(options: argparse.Namespace) -> int:
 
 
 def _template(options: argparse.Namespace) -> int:
-    if options.kind == "samples":
+    from energy.catalogue.records import TARGETS
+    from energy.problems import WrongUse
+
+    if options.target is not None and options.target not in TARGETS:
+        raise WrongUse(f"The target '{options.target}' is not known.", f"One of: {', '.join(TARGETS)}.")
+    if options.kind == "samples" and options.target not in (None, "human", "none"):
+        unit = "% as fed" if options.target in ("dog", "cat") else "g/kg DM"
+        names = ["crude protein", "crude fat", "crude fibre", "ash"]
+        names += [] if options.target in ("dog", "cat") else ["starch", "sugars", "NDF", "ADF"]
+        print(
+            "sample_id,name,target,form,fat_method,starch_method,moisture_method,dry matter [%],residual moisture [%],"
+            + ",".join(f"{name} [{unit}]" for name in names)
+            + f",gross energy [MJ/kg {unit.split(' ', 1)[1]}],u(gross energy) [MJ/kg],energy digestibility [%]"
+        )
+    elif options.kind == "samples":
         print(
             "sample_id,name,target,food_group,form,fat_method,moisture_method,nitrogen_factor,moisture [%],"
             "crude protein [g/100 g as is],fat [g/100 g as is],available carbohydrate [g/100 g as is],"

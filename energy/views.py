@@ -37,8 +37,8 @@ DECLARED_COLUMNS = (
 )  # fmt: skip
 BALANCE_COLUMNS = ("sample_id", "mass_sum", "heat_from_components", "residual_energy", "chi_square", "p_value")
 EQUATION_COLUMNS = (
-    "id", "title", "target", "stage", "kind", "route", "steps", "body", "law", "formula", "latex", "result", "nitrogen_factor", "twin",
-    "domain", "residual_sd", "source", "locator", "source_status", "source_words", "note", "file",
+    "id", "title", "target", "stage", "kind", "route", "steps", "body", "law", "formula", "latex", "symbols", "result", "basis",
+    "nitrogen_factor", "twin", "methods", "domain", "residual_sd", "r2", "source", "locator", "source_status", "source_words", "note", "file",
 )  # fmt: skip
 
 
@@ -292,11 +292,15 @@ def equation_row(s: System) -> dict[str, Any]:
         "law": s.law,
         "formula": s.formula.text,
         "latex": s.formula.latex,
+        "symbols": "; ".join(f"{n} = {x.quantity} [{x.unit}]" for n, x in s.symbols.items() if x.quantity),
         "result": s.result_unit,
+        "basis": s.result_basis,
         "nitrogen_factor": str(s.nitrogen_factor),
         "twin": s.twin,
+        "methods": "; ".join(f"{column} {' or '.join(m)}" for column, m in s.requires_methods.items()),
         "domain": "; ".join(x for x in (domain, s.domain_words) if x),
         "residual_sd": s.residual_sd,
+        "r2": s.r2,
         "source": s.citation,
         "locator": s.locator,
         "source_status": s.source_status,

@@ -137,3 +137,32 @@ def test_documents_of_several_species_stand_side_by_side(tmp_path):
     )
     assert main(["assess", str(table), "--out", str(tmp_path / "out.html")]) == 0
     assert sorted(p.name for p in tmp_path.glob("*.html")) == ["out_cat.html", "out_dog.html"]
+
+
+@pytest.mark.parametrize("target", ["dog", "growing_pig", "fish"])
+def test_a_template_for_feeds_can_be_filled_in_and_read(target, tmp_path, capsys):
+    assert main(["template", "samples", "--target", target]) == 0
+    header = capsys.readouterr().out.strip().split(",")
+    given = {"sample_id": "1", "target": target, "dry matter [%]": "90"}
+    table = tmp_path / "filled.csv"
+    table.write_text(",".join(header) + "\n" + ",".join(given.get(h, "") for h in header) + "\n")
+    assert main(["assess", str(table)]) == 0
+
+
+def test_a_template_for_nobody_known_is_refused(capsys):
+    assert main(["template", "samples", "--target", "unicorn"]) == 2
+    assert "rabbit" in capsys.readouterr().err
+
+
+def test_equations_are_listed_by_the_kind_of_their_stage(capsys):
+    assert main(["equations", "--target", "poultry", "--stage", "AMEn"]) == 0
+    lines = capsys.readouterr().out.splitlines()
+    assert len(lines) >= 20
+    assert all(" AMEn " in line for line in lines)
+
+
+def test_one_equation_is_shown_with_methods_symbols_and_basis(capsys):
+    assert main(["equations", "gfe_2008_me_compound"]) == 0
+    shown = capsys.readouterr().out
+    for words in ("fat_method acid_hydrolysis", "CP = crude_protein [g/kg any basis]", "residual sd       0.25", "any"):
+        assert words in shown
