@@ -147,7 +147,7 @@ def _equations(options: argparse.Namespace) -> int:
     table = equations(options.target, options.stage, options.route, house=options.house)
     if options.id is None:
         for row in table.itertuples(index=False):
-            print(f"{row.id:<44}{str(row.kind or row.stage):<15}{row.route:<13}{row.source_words:<46.45}{row.title}")
+            print(f"{row.id:<44}{row.kind or row.stage!s:<15}{row.route:<13}{row.source_words:<46.45}{row.title}")
         return 0
     found = table[table["id"] == options.id]
     if found.empty:

@@ -9,6 +9,7 @@ from functools import lru_cache
 from typing import Any
 
 from energy.catalogue import reader, tables
+from energy.catalogue.derived import derived_rules
 from energy.catalogue.records import System
 from energy.compare import Limit, read_limit
 from energy.evaluate import Pair
@@ -115,7 +116,7 @@ def measured(system: System, columns: frozenset[str]) -> bool:
     """True if a table holds every quantity a formula needs that no rule derives."""
     needed = {s.quantity for n, s in system.inputs.items() if s.quantity and n in system.formula.symbols
               and s.absent == "missing_input"}  # fmt: skip
-    return needed - set(reader.derived_rules()) - set(reader.DERIVED_ONLY) - {"crude_protein"} <= columns
+    return needed - set(derived_rules()) - set(reader.DERIVED_ONLY) - {"crude_protein"} <= columns
 
 
 def comparable(bomb: System, composition: System) -> bool:

@@ -16,7 +16,7 @@ import numpy as np
 
 from energy import algebra
 from energy.algebra import Node
-from energy.catalogue.reader import derived_rules
+from energy.catalogue.derived import derived_rules
 from energy.catalogue.records import System
 from energy.quantities import dictionary
 from energy.resolve import Parameter, Resolver, Signature, signatures

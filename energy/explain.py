@@ -15,7 +15,8 @@ import numpy as np
 
 from energy import algebra
 from energy.algebra import Node
-from energy.catalogue.reader import derived_rules, systems
+from energy.catalogue.derived import derived_rules
+from energy.catalogue.reader import systems
 from energy.catalogue.records import System
 from energy.evaluate import Pair
 from energy.quantities import dictionary

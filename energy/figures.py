@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from energy.catalogue import reader
+from energy.catalogue.derived import derived_rules
 from energy.catalogue.records import System
 from energy.display import Display
 from energy.evaluate import METHOD, NO_FACTOR, OUTSIDE, BySystem, assumes_nitrogen_factor, is_listed, plan
@@ -128,7 +128,7 @@ def _zero_words(system: System, quantity: str) -> str:
             return _zero_sentence(quantity, symbol.absent_then)
     if quantity == "nitrogen_factor":
         return "nitrogen factor not given: 6.25 assumed"
-    for rules in reader.derived_rules().values():
+    for rules in derived_rules().values():
         for rule in rules:
             if rule.optional.get(quantity):
                 return _zero_sentence(quantity, rule.optional[quantity])

@@ -15,7 +15,7 @@ import numpy as np
 
 from energy import basis as bases
 from energy.algebra import Node, add, multiply, power, scale, slope, substitute
-from energy.catalogue.reader import derived_rules
+from energy.catalogue.derived import derived_rules
 from energy.catalogue.records import Symbol, System
 from energy.catalogue.tables import food_groups, table
 from energy.quantities import dictionary

@@ -12,7 +12,7 @@ LAYERS = [
     ["energy.units"],
     ["energy.quantities", "energy.algebra", "energy.formula", "energy.basis"],
     ["energy.catalogue", "energy.catalogue.records", "energy.catalogue.tables"],
-    ["energy.catalogue.chains"],
+    ["energy.catalogue.chains", "energy.catalogue.derived"],
     ["energy.catalogue.reader"],
     ["energy.feedlaw"],
     ["energy.samples"],
@@ -32,6 +32,7 @@ LAYERS = [
     ["energy.views"],
     ["energy.assessment"],
     ["energy.report", "energy.report.tables", "energy.report.board", "energy.report.document", "energy.report.screen"],
+    ["energy.report.entries"],
     [
         "energy.pages",
         "energy.pages.drawing",

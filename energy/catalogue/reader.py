@@ -25,7 +25,6 @@ from energy.catalogue.records import (
     Bound,
     Check,
     Component,
-    DerivedRule,
     Publication,
     Symbol,
     System,
@@ -466,30 +465,7 @@ def _symbol(name: str, entry: Mapping[str, Any], result_scale: float, where: str
     )
 
 
-# ---- tables, derived quantities, the whole catalogue --------------------------------------------------------
-
-
-@cache
-def derived_rules() -> dict[str, tuple[DerivedRule, ...]]:
-    """quantity -> the ways to get it, best first."""
-    raw = tomllib.loads((FOLDER / "derived.toml").read_text(encoding="utf-8"))
-    rules: dict[str, list[DerivedRule]] = {}
-    for entry in raw["rule"]:
-        where = f"derived.toml, {entry['quantity']}"
-        requires = tuple(str(r) for r in entry["requires"])
-        rules.setdefault(entry["quantity"], []).append(
-            DerivedRule(
-                quantity=entry["quantity"],
-                formula=_formula(entry["formula"], where),
-                requires=tuple(r.removesuffix(":given") for r in requires),
-                given=frozenset(r.removesuffix(":given") for r in requires if r.endswith(":given")),
-                optional=dict(entry.get("optional", {})),
-                words=entry["words"],
-                source=entry["source"],
-                source_status=entry["source_status"],
-            )
-        )
-    return {name: tuple(found) for name, found in rules.items()}
+# ---- the whole catalogue --------------------------------------------------------------------------------------
 
 
 @cache

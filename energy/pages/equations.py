@@ -8,7 +8,7 @@ import streamlit as st
 from energy.assessment import equations
 from energy.catalogue.reader import systems
 from energy.pages import session
-from energy.report import screen
+from energy.report import entries, screen
 
 FILTERS = (
     ("target", "Species or use"),
@@ -24,15 +24,15 @@ def filtered() -> pd.DataFrame:
     table = equations()
     wanted = {}
     for place, (name, title) in zip(st.columns(len(FILTERS)), FILTERS, strict=True):
-        values = screen.equation_filters(table, name)
+        values = entries.equation_filters(table, name)
         wanted[name] = place.multiselect(title, values, key=f"filter_{name}", placeholder="all")
     text = st.text_input("Title, source, country or id holds", key="filter_text")
-    return screen.equation_filter(table, wanted, text)
+    return entries.equation_filter(table, wanted, text)
 
 
 def choose(table: pd.DataFrame) -> str:
     """The entry looked at: ticked in the table or taken from the list."""
-    shown = screen.equation_list(table)
+    shown = entries.equation_list(table)
     picked = st.dataframe(
         shown,
         hide_index=True,
@@ -63,17 +63,17 @@ def show(table: pd.DataFrame, chosen: str) -> None:
     """One entry: formula, facts, symbols, factors, worked values."""
     system = systems()[chosen]
     st.subheader(system.title, anchor=False)
-    st.latex(screen.latex_line(system))
+    st.latex(entries.latex_line(system))
     domain = str(table.loc[table["id"] == chosen, "domain"].iloc[0])
-    st.table(screen.safe(screen.fact_table(system, domain)), hide_index=True, hide_header=True)
+    st.table(screen.safe(entries.fact_table(system, domain)), hide_index=True, hide_header=True)
     st.markdown("**Symbols**")
-    st.table(screen.safe(screen.symbol_table(system)), hide_index=True)
+    st.table(screen.safe(entries.symbol_table(system)), hide_index=True)
     if system.components:
         st.markdown("**Factors**")
-        st.table(screen.safe(screen.component_table(system)), hide_index=True)
+        st.table(screen.safe(entries.component_table(system)), hide_index=True)
     if system.checks:
         st.markdown("**Worked values it reproduces**")
-        st.table(screen.safe(screen.check_table(system)), hide_index=True)
+        st.table(screen.safe(entries.check_table(system)), hide_index=True)
 
 
 session.opening("Equations", "The catalogue: every formula and factor with its source, and how it is known.")
