@@ -11,6 +11,8 @@ import numpy as np
 
 from energy import display, order, reasons, views
 from energy import partition as partitions
+from energy.balance import Balances
+from energy.balance import balances as draw_up
 from energy.catalogue import reader
 from energy.catalogue.records import TARGETS, System
 from energy.choice import Choice, Wanted, choose, choose_shipped
@@ -183,6 +185,11 @@ class Assessment:
         return reasons.causes(self)
 
     @cached_property
+    def balance(self) -> Balances:
+        """Mass and energy balance of the batch."""
+        return draw_up(self.samples, self.catalogue[self.blocks.pairs[0].heats])
+
+    @cached_property
     def leading(self) -> np.ndarray:
         """(systems, n) bool: one figure per sample and stage leads."""
         found = np.zeros(self.blocks.status.shape, dtype=bool)
@@ -212,7 +219,7 @@ class Assessment:
 
     @cached_property
     def balances(self) -> pd.DataFrame:
-        """Balances; columns present, filled as far as this version computes them."""
+        """Mass and energy balance per sample, the global test, reconciled values and suspects."""
         return views.balances(self)
 
     @cached_property

@@ -273,11 +273,9 @@ def assumes_nitrogen_factor(resolver: Resolver, system: System) -> bool:
     uses = any(s.quantity in ("crude_protein", "carbohydrate_all", "carbohydrate_by_difference", "nitrogen")
                for s in system.inputs.values())  # fmt: skip
     as_protein = resolver.choices.get("nitrogen", -1) != 0
-    if not uses:
-        return False
     if system.nitrogen_factor == "own":
-        return not as_protein or resolver.signature.group == 1
-    return as_protein
+        return uses and (not as_protein or resolver.signature.group == 1)
+    return uses and as_protein
 
 
 def _compile(
@@ -311,6 +309,18 @@ def _compile(
     # our own text: registered names, numbers and the functions above, nothing else can be in it
     exec(compile("\n".join(body), "<systems>", "exec"), {"__builtins__": {}, **_FUNCTIONS}, space)
     return space["run"], inputs, tuple(place)
+
+
+def values_of(samples: Samples, resolver: Resolver, nodes: Sequence[Node], rows: np.ndarray) -> np.ndarray:
+    """(nodes, len(rows)): expressions in measured columns, for rows of the resolver's own signature."""
+    run, inputs, _ = _compile({("value", k): node for k, node in enumerate(nodes)}, [])
+    leaves, codes = [_leaf(samples, name) for name in inputs], samples.memo.get("group_codes")
+    out = np.empty((len(nodes), len(rows)))
+    for low in range(0, len(rows), CHUNK):
+        here = rows[low : low + CHUNK]
+        run([_take(leaf, name, resolver.parameters, here, codes) for leaf, name in zip(leaves, inputs, strict=True)],
+            [line[low : low + CHUNK] for line in out])  # fmt: skip
+    return out
 
 
 # ---- running it -----------------------------------------------------------------------------------------------
@@ -347,7 +357,9 @@ def _run(samples: Samples, plan: Plan, rows: np.ndarray | None, blocks: Blocks) 
     for low in range(0, n, CHUNK):
         high = min(low + CHUNK, n)
         here: Any = slice(low, high) if rows is None else rows[low:high]
-        inputs = [_take(leaf, name, plan, here, codes) for leaf, name in zip(leaves, plan.inputs, strict=True)]
+        inputs = [
+            _take(leaf, name, plan.parameters, here, codes) for leaf, name in zip(leaves, plan.inputs, strict=True)
+        ]
         direct = rows is None
         out = [_target(blocks, key, here, direct, spare, high - low) for key in plan.outputs]
         plan.run(inputs, out)
@@ -387,11 +399,13 @@ def _filled(samples: Samples, key: str, array: np.ndarray, fill: float) -> np.nd
     return memo[key]
 
 
-def _take(leaf: np.ndarray | None, name: str, plan: Plan, here: Any, codes: np.ndarray | None) -> np.ndarray:
+def _take(
+    leaf: np.ndarray | None, name: str, parameters: Mapping[str, Parameter], here: Any, codes: np.ndarray | None
+) -> np.ndarray:
     if leaf is not None:
         return leaf[here]
     assert codes is not None
-    parameter = plan.parameters[name.removeprefix("V")]
+    parameter = parameters[name.removeprefix("V")]
     return np.take(parameter.variances if name.startswith("V") else parameter.values, codes[here])
 
 

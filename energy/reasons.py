@@ -16,6 +16,7 @@ from energy.evaluate import (
 )
 from energy.explain import Facts, component_amounts, is_amount, parts_by_component, rank
 from energy.figures import figure_reasons
+from energy.quantities import DISPLAY_SCALE, dictionary
 from energy.samples import BASIS_CODE, Samples
 
 if TYPE_CHECKING:
@@ -23,6 +24,8 @@ if TYPE_CHECKING:
 
     from energy.assessment import Assessment
 
+#: the balances of a sample are said not to close below this p-value
+FAILS = 0.05
 #: who can use urea, and is fed it
 RUMINANTS = ("cattle", "dairy_cow", "sheep")
 #: crude protein of dry matter below which nobody adds urea to a feed (judgement of ours)
@@ -305,12 +308,37 @@ def questions(a: Assessment, sample_id: str) -> list[tuple[str, str]]:
     probable = f"{cause[row]}. Next: {following[row]}" if cause[row] else _no_cause(int(a.verdict[0, row]))
     return [
         ("What does the bomb say?", _say(a, measured, row)),
-        ("Do bomb and composition describe the same material?", f"{ge}: {material}"),
+        ("Do bomb and composition describe the same material?", f"{ge}: {material}{balance_words(a, row)}"),
         ("What does the eater get, and which figure leads?", "; ".join(leads) or "nothing can be computed"),
         ("Do the routes agree?", routes),
         ("If not, what is the probable cause, and what should be measured next?", probable),
         ("May the declared value stand?", _declared_words(a, row)),
     ]
+
+
+def balance_words(a: Assessment, row: int) -> str:
+    """What the mass and energy balance of a sample say, as the rest of a sentence; '' where there is no test."""
+    b = a.balance
+    p = b.p_value[row]
+    if not np.isfinite(p):
+        return ""
+    sums = "" if np.isnan(b.mass[row]) else f"; the components sum to {100 * (1 + b.mass[row]):.1f} %"
+    which = "the balances" if b.freedom[row] > 1 else "the energy balance"
+    chance = f"p {p:.2g}" if p >= 0.001 else "p below 0.001"
+    if p >= FAILS:
+        return f"{sums}; {which} {'close' if b.freedom[row] > 1 else 'closes'} ({chance})"
+    if b.freedom[row] == 1:
+        return (f"{sums}; {which} does not close ({chance}); with carbohydrate by difference no single determination can be "
+                "singled out: a determined carbohydrate would restore the second balance")  # fmt: skip
+    told = []
+    for name in b.suspects()[row][:3]:
+        entry = dictionary()[name]
+        size = b.columns[name]["size"][row] / DISPLAY_SCALE[entry.dimension]
+        unit = "MJ/kg" if entry.dimension == "energy" else "g per 100 g"
+        told.append(f"{entry.title} {abs(size):.3g} {unit} too {'high' if size > 0 else 'low'}")
+    return (
+        f"{sums}; {which} do not close ({chance}); one error alone that would close them: {' or '.join(told) or 'none'}"
+    )
 
 
 def _no_cause(code: int) -> str:

@@ -35,7 +35,10 @@ DECLARED_COLUMNS = (
     "sample_id", "law", "declared_kj", "declared_kcal", "computed_kj", "computed_kcal", "rounded_kj", "rounded_kcal",
     "lower", "upper", "probability_within", "verdict", "locator",
 )  # fmt: skip
-BALANCE_COLUMNS = ("sample_id", "mass_sum", "heat_from_components", "residual_energy", "chi_square", "p_value")
+#: the columns every table of balances has; reconciled values follow, one triple per measured column
+BALANCE_COLUMNS = (
+    "sample_id", "mass_sum", "heat_from_components", "residual_energy", "chi_square", "p_value", "freedom", "suspects",
+)  # fmt: skip
 EQUATION_COLUMNS = (
     "id", "title", "target", "stage", "kind", "route", "steps", "body", "law", "formula", "latex", "symbols", "result", "basis",
     "nitrogen_factor", "twin", "methods", "domain", "residual_sd", "r2", "source", "locator", "source_status", "source_words", "note", "file",
@@ -195,20 +198,32 @@ def declared(a: Assessment) -> pd.DataFrame:
 
 
 def balances(a: Assessment) -> pd.DataFrame:
-    """Mass sum and energy residual per sample (fractions, MJ/kg on the working basis)."""
+    """Both balances per sample, the global test, and each measured column reconciled (in its own unit of `inputs`).
+
+    mass_sum : sum of the components (1 when all is there), NaN unless carbohydrate was determined. residual_energy :
+    MJ/kg on the working basis. suspects : measurements that cannot be told apart as the culprit, likeliest first; empty
+    where the global test passes, or where carbohydrate was found by difference.
+    """
     import pandas as pd
 
-    i = a.blocks.row(a.blocks.pairs[0].heats)
-    return pd.DataFrame(
-        {
-            "sample_id": a.samples.ids,
-            "mass_sum": reasons.mass_sum(a.samples),
-            "heat_from_components": a.blocks.value[i],
-            "residual_energy": a.blocks.measurement[0],
-            "chi_square": np.nan,
-            "p_value": np.nan,
-        }
-    )
+    b, i = a.balance, a.blocks.row(a.blocks.pairs[0].heats)
+    failed = b.p_value < reasons.FAILS
+    table: dict[str, Any] = {
+        "sample_id": a.samples.ids,
+        "mass_sum": reasons.mass_sum(a.samples),
+        "heat_from_components": a.blocks.value[i],
+        "residual_energy": a.blocks.measurement[0],
+        "chi_square": b.chi_square,
+        "p_value": b.p_value,
+        "freedom": b.freedom,
+        "suspects": [", ".join(names) if bad else "" for names, bad in zip(b.suspects(), failed, strict=True)],
+    }
+    for name, kept in b.columns.items():
+        scale = 1 / DISPLAY_SCALE[dictionary()[name].dimension]
+        table[f"reconciled_{name}"] = kept["value"] * scale
+        table[f"u_reconciled_{name}"] = kept["u"] * scale
+        table[f"size_{name}"] = np.where(failed, kept["size"], np.nan) * scale
+    return pd.DataFrame(table)
 
 
 def sources(a: Assessment) -> pd.DataFrame:

@@ -10,7 +10,7 @@ ROOT = Path(__file__).parent.parent
 LAYERS = [
     ["energy", "energy.problems"],
     ["energy.units"],
-    ["energy.quantities", "energy.algebra", "energy.formula", "energy.basis"],
+    ["energy.quantities", "energy.algebra", "energy.formula", "energy.basis", "energy.reconcile"],
     ["energy.catalogue", "energy.catalogue.records", "energy.catalogue.tables"],
     ["energy.catalogue.chains", "energy.catalogue.derived"],
     ["energy.catalogue.reader"],
@@ -24,7 +24,7 @@ LAYERS = [
     ["energy.evaluate"],
     ["energy.display"],
     ["energy.compare"],
-    ["energy.choice"],
+    ["energy.choice", "energy.balance"],
     ["energy.explain"],
     ["energy.figures", "energy.order"],
     ["energy.reasons"],
