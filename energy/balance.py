@@ -19,12 +19,12 @@ from energy.algebra import Node
 from energy.catalogue.records import System
 from energy.evaluate import values_of
 from energy.quantities import dictionary
-from energy.reconcile import Reconciled, reconcile
+from energy.reconcile import Reconciled, reconcile_independent
 from energy.resolve import Resolver, signatures
 from energy.samples import Samples
 
-#: rows are reconciled so many at a time: matrices of the columns' size are made for each of them
-ROWS = 20_000
+#: rows are reconciled so many at a time, so that their slopes stay in cache
+ROWS = 16_384
 #: likelihood ratios within this of the largest are not told apart (95 % point of chi-square, one degree of freedom)
 INDISTINGUISHABLE = 3.84
 #: carbohydrate that was determined, and what else stands beside it in the sum
@@ -123,31 +123,25 @@ def _solve(
     for low in range(0, len(here), ROWS):
         rows = here[low : low + ROWS]
         values = values_of(samples, resolver, [*nodes, *slopes, model], rows)
-        residual, a = values[:m].T, values[m:-1].reshape(m, k, -1).transpose(2, 0, 1)
-        y = np.nan_to_num(np.array([samples.columns[c][rows] for c in names]).T)
-        u = np.nan_to_num(np.array([samples.u[c][rows] for c in names]).T)
-        good = np.isfinite(residual).all(axis=1) & np.isfinite(a).all(axis=(1, 2)) & np.isfinite(values[-1])
+        residual, a = values[:m], values[m:-1].reshape(m, k, -1)
+        y = np.nan_to_num(np.array([samples.columns[c][rows] for c in names]))
+        u = np.nan_to_num(np.array([samples.u[c][rows] for c in names]))
         unknown = [np.isnan(samples.u[c][rows]) & ~np.isnan(samples.columns[c][rows]) for c in names]
-        good &= ~np.logical_or.reduce(unknown)
-        _note(found, rows, residual)
+        good = np.isfinite(values).all(axis=0) & ~np.logical_or.reduce(unknown)
+        found.energy[rows] = residual[-1]
+        if m > 1:
+            found.mass[rows] = residual[0]
         if not good.any():
             continue
-        covariance = np.einsum("nk,kl->nkl", u[good] ** 2, np.eye(k))
-        extra = np.zeros((int(good.sum()), m, m))
-        extra[:, -1, -1] = values[-1][good]  # the heats' own uncertainty belongs to the energy balance
-        result = reconcile(y[good], covariance, a[good], model=extra, residual=residual[good])
+        extra = np.zeros((m, int(good.sum())))
+        extra[-1] = values[-1][good]  # the heats' own uncertainty belongs to the energy balance
+        result = reconcile_independent(y[:, good], u[:, good] ** 2, a[:, :, good], residual[:, good], extra)
         _keep(samples, found, rows[good], names, result)
 
 
 def _slope(node: Node, name: str) -> Node:
     """Slope with respect to a column, whether it stands plain or filled with zeros."""
     return algebra.add(algebra.slope(node, name), algebra.slope(node, name + "?"))
-
-
-def _note(found: Balances, rows: np.ndarray, residual: np.ndarray) -> None:
-    found.energy[rows] = residual[:, -1]
-    if residual.shape[1] > 1:
-        found.mass[rows] = residual[:, 0]
 
 
 def _keep(samples: Samples, found: Balances, rows: np.ndarray, names: Sequence[str], result: Reconciled) -> None:

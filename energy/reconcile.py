@@ -89,6 +89,45 @@ def reconcile(
         )
 
 
+def reconcile_independent(
+    y: np.ndarray, variance: np.ndarray, balances: np.ndarray, residual: np.ndarray, model: np.ndarray
+) -> Reconciled:
+    """The same for measurements without covariance under one or two balances, in closed form: for many samples.
+
+    y, variance : (k, n). balances : (m, k, n) slopes. residual, model : (m, n), model the variance of each balance
+    itself. Where two balances depend on each other the results are NaN.
+    """
+    m, k, _ = balances.shape
+    first, second = balances[0], balances[-1]
+    with np.errstate(divide="ignore", invalid="ignore"):
+        v11 = (first**2 * variance).sum(axis=0) + model[0]
+        if m == 1:
+            weights = [residual[0] / v11]
+            quadratic = first**2 / v11
+            own = [v11]
+        else:
+            v12 = (first * second * variance).sum(axis=0)
+            v22 = (second**2 * variance).sum(axis=0) + model[1]
+            det = v11 * v22 - v12**2
+            det = np.where(det > 1e-12 * v11 * v22, det, np.nan)
+            weights = [(v22 * residual[0] - v12 * residual[1]) / det, (v11 * residual[1] - v12 * residual[0]) / det]
+            quadratic = (first**2 * v22 - 2 * first * second * v12 + second**2 * v11) / det
+            own = [v11, v22]
+        drive = sum((a * w for a, w in zip(balances, weights, strict=True)), np.zeros((k, 1)))
+        change, taken = variance * drive, variance**2 * quadratic
+        return Reconciled(
+            value=(y - change).T,
+            u=np.sqrt(np.maximum(variance - taken, 0.0)).T,
+            residual=residual.T,
+            global_test=sum(r * w for r, w in zip(residual, weights, strict=True)),
+            freedom=m,
+            constraint_test=(np.abs(residual) / np.sqrt(own)).T,
+            adjustment_test=np.where(taken > 0, np.abs(change) / np.sqrt(taken), 0.0).T,
+            ratio=np.where(quadratic > 0, drive**2 / quadratic, 0.0).T,
+            size=np.where(quadratic > 0, drive / quadratic, np.nan).T,
+        )
+
+
 def without_unmeasured(balances: np.ndarray, unmeasured: np.ndarray) -> np.ndarray:
     """Balances (m, k) from which the unmeasured inputs ((k,) bool) are eliminated: rows P A_m with P A_u = 0.
 

@@ -5,7 +5,7 @@ import pytest
 from scipy import stats
 
 from energy.problems import WrongUse
-from energy.reconcile import reconcile, solve_unmeasured, without_unmeasured
+from energy.reconcile import reconcile, reconcile_independent, solve_unmeasured, without_unmeasured
 
 # ---- R1: heat exchanger with bypass, Narasimhan and Jordache 2000, chapter 1 --------------------------------------
 
@@ -201,3 +201,20 @@ def test_the_global_test_has_its_distribution():
     true = np.array([100, 64, 36, 64, 36, 100.0])
     found = reconcile(true + rng.normal(size=(20_000, 6)), np.eye(6), EXCHANGER)
     assert (found.global_test > stats.chi2.ppf(0.95, 4)).mean() == pytest.approx(0.05, abs=0.005)
+
+
+@pytest.mark.parametrize("m", [1, 2])
+def test_the_closed_form_says_the_same_as_the_matrices(m):
+    rng = np.random.default_rng(5)
+    k, n = 7, 40
+    y, u, a = rng.normal(size=(k, n)), rng.uniform(0.1, 2, (k, n)), rng.normal(size=(m, k, n))
+    a[:, 3] = 0  # a measurement in no balance
+    model = rng.uniform(0, 0.5, (m, n))
+    residual = np.einsum("mkn,kn->mn", a, y)
+    quick = reconcile_independent(y, u**2, a, residual, model)
+    for i in range(n):
+        slow = reconcile(y[:, i], np.diag(u[:, i] ** 2), a[:, :, i], model=np.diag(model[:, i]))
+        for name in ("value", "u", "global_test", "constraint_test", "adjustment_test", "ratio", "size"):
+            np.testing.assert_allclose(
+                getattr(quick, name)[i], getattr(slow, name)[0], rtol=1e-9, atol=1e-12, err_msg=name
+            )
