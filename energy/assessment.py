@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from energy import display, order, reasons, views
+from energy import consistency, display, order, reasons, views
 from energy import partition as partitions
 from energy.balance import Balances
 from energy.balance import balances as draw_up
@@ -20,6 +20,7 @@ from energy.compare import NOT_COMPUTED, SINGLE_ROUTE, verdict_codes
 from energy.evaluate import MISSING, Blocks, evaluate
 from energy.problems import Problem, WrongUse
 from energy.samples import Samples
+from energy.targets import target_slug, targets_like
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -59,6 +60,9 @@ def assess(
         choice = choose(catalogue, wanted, columns)
     blocks = evaluate(batch, choice.systems, choice.pairs)
     shown = display.display(unit, basis, blocks.basis)
+    if np.isnan(display.basis_factor(batch, blocks.basis, shown.basis)).all() and len(batch):
+        raise WrongUse(f"Nothing can be shown on '{shown.basis}': no sample of the table has a dry matter or moisture.",
+                       f"Give it, or choose {blocks.basis}.")  # fmt: skip
     if aim in ("human", "none"):  # a food's ME is never set beside its GE by one system alone
         return Assessment(batch, choice, blocks, coverage, shown, catalogue)
     findings = order.find(batch, choice.systems, blocks, catalogue)
@@ -88,8 +92,9 @@ def _target(samples: Samples, target: str | None) -> str:
         wanted = next(iter(named), None)
     if wanted is None:
         raise WrongUse("It is not said for whom the energy is meant.", f"Give target=, one of: {', '.join(TARGETS)}.")
+    wanted = target_slug(wanted)
     if wanted not in TARGETS:
-        raise WrongUse(f"The target '{wanted}' is not known.", f"One of: {', '.join(TARGETS)}.")
+        raise WrongUse(f"The target '{wanted}' is not known.", targets_like(str(wanted)))
     return wanted
 
 
@@ -128,7 +133,19 @@ def assess_each(samples: Samples | str | Path | pd.DataFrame, **wishes: Any) -> 
         raise WrongUse(f"No known target is named for {', '.join(open_rows[:10])}{more}.",
                        f"Fill the column 'target' with one of: {', '.join(TARGETS)}; or give one target for all.")  # fmt: skip
     said = batch.text["target"].astype(str)
-    return {t: assess(batch.take(np.flatnonzero(said == t)), target=t, **wishes) for t in named}
+    found = {}
+    for target in named:
+        mine, own = batch.take(np.flatnonzero(said == target)), dict(wishes)
+        law = reader.systems().get(str(wishes.get("law")))
+        if law is not None and target not in law.targets:
+            own["law"] = None
+            mine.problems.append(
+                Problem(f"{law.id} is for {', '.join(law.targets)}; {target} is computed without a law.",
+                        "Nothing to mend, or take this species or use by itself with a law of its own.",
+                        batch.source, column="target", severity="warning")
+            )  # fmt: skip
+        found[target] = assess(mine, target=target, **own)
+    return found
 
 
 @dataclass
@@ -156,7 +173,11 @@ class Assessment:
     @property
     def problems(self) -> list[Problem]:
         """Everything found while reading the table, and values in it that cannot stand together."""
-        return self.samples.problems + self.findings.problems
+        return self.samples.problems + self._clashes + self.findings.problems
+
+    @cached_property
+    def _clashes(self) -> list[Problem]:
+        return consistency.find(self.samples, feed=self.target not in ("human", "none"))
 
     @cached_property
     def width(self) -> np.ndarray:

@@ -134,13 +134,15 @@ def _same_stage(bomb: System, composition: System) -> None:
 
 
 def _find(catalogue: dict[str, System], identity: str, target: str, role: str) -> System:
+    fits = [s.id for s in catalogue.values() if target in s.targets and (s.law or role != "law")]
     if identity not in catalogue:
-        near = difflib.get_close_matches(identity, catalogue, n=3, cutoff=0.4)
+        near = difflib.get_close_matches(identity, fits, n=3, cutoff=0.4)
         raise WrongUse(f"There is no {role} '{identity}'.", f"Did you mean {', '.join(near)}?" if near else
                        "List them with: python -m energy equations.")  # fmt: skip
     system = catalogue[identity]
     if target not in system.targets:
-        raise WrongUse(f"'{identity}' is for {', '.join(system.targets)}, not for {target}.", "Choose another one.")
+        raise WrongUse(f"'{identity}' is for {', '.join(system.targets)}, not for {target}.",
+                       f"Choose another one{': ' + ', '.join(fits) if role == 'law' and fits else ''}.")  # fmt: skip
     return system
 
 

@@ -221,7 +221,8 @@ def _system_status(
     used = algebra.names(node)
     required = tuple(sorted(n for n in used if not n.startswith(("@", "V@")) and not n.endswith("?")))
     optional = {n[:-1] for n in used if n.endswith("?") and is_listed(system, n[:-1])}
-    base = ASSUMED if resolver.assumed(system) or assumes_nitrogen_factor(resolver, system) else OK
+    assumed = resolver.assumed(system) or resolver.presumed(system) or assumes_nitrogen_factor(resolver, system)
+    base = ASSUMED if assumed else OK
     factors = []
     for name in sorted(n for n in used if n.startswith("@") and n != "@nitrogen_factor"):
         parameter = resolver.parameters[name]
@@ -232,10 +233,10 @@ def _system_status(
                 roots[key, i] = amount
                 factors.append((name, key))
     bounds = []
-    for bound in system.domain:
-        target = node if bound.symbol == "result" else resolver.symbol(system.symbols[bound.symbol], system)
+    for k, bound in enumerate(system.domain):
+        target = resolver.bound(bound, system, node)
         if target is not None:
-            key = f"domain {bound.symbol}"
+            key = f"domain {k}"
             roots[key, i] = target
             bounds.append((key, bound.low, bound.high))
     return SystemStatus(
@@ -253,8 +254,8 @@ def is_listed(system: System, quantity: str) -> bool:
     direct = [s.absent for s in system.inputs.values() if s.quantity == quantity]
     if direct:
         return "zero_and_listed" in direct
-    if quantity == "nitrogen_factor":
-        return True
+    if quantity == "nitrogen_factor":  # crude protein of a feed is N x 6.25 by definition
+        return system.nitrogen_factor != "feed"
     used = {s.quantity for s in system.inputs.values()}
     return any(rule.optional.get(quantity) for name in used if name for rule in derived_rules().get(name, ()))
 

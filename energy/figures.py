@@ -9,7 +9,7 @@ import numpy as np
 from energy.catalogue.derived import derived_rules
 from energy.catalogue.records import System
 from energy.display import Display
-from energy.evaluate import METHOD, NO_FACTOR, OUTSIDE, BySystem, assumes_nitrogen_factor, is_listed, plan
+from energy.evaluate import METHOD, MISSING, NO_FACTOR, OUTSIDE, BySystem, assumes_nitrogen_factor, is_listed, plan
 from energy.quantities import dictionary
 from energy.resolve import Resolver, signatures
 from energy.samples import Samples
@@ -58,6 +58,10 @@ def figure_reasons(a: Assessment, i: int) -> np.ndarray:
             bad = a.samples.voided.get(column, np.zeros(len(a.samples), dtype=bool))[here]
             notes.append((bad, f"{quantity_title(column)}: the value given could not be used"))
             notes.append((empty & ~bad, f"needs {quantity_title(column)}: not given"))
+            unknown = np.isnan(a.samples.u[column][here]) & ~empty & (a.blocks.status[i, here] < MISSING)
+            notes.append(
+                (unknown, f"its u is not known: none is given for {quantity_title(column)}, and there is no default")
+            )
         for column in (c for c in status.optional if is_listed(system, c)):
             gone = np.isnan(a.samples.columns[column][here])
             notes.append((gone, _zero_words(system, column)))
@@ -71,7 +75,7 @@ def figure_reasons(a: Assessment, i: int) -> np.ndarray:
         if impossible is not None:
             notes += [(impossible[here] == text, text) for text in set(impossible[here]) - {""}]
         notes.append((code == METHOD, f"needs another method: {_methods(system)}"))
-        notes.append((code == OUTSIDE, f"outside its domain: {_domain(system)}"))
+        notes.append((code == OUTSIDE, f"outside its domain: {'; '.join(b.words for b in system.domain)}"))
         found[here] = _join(fixed, notes, len(here))
     return found
 
@@ -98,6 +102,7 @@ def _join(fixed: list[str], notes: list[tuple[np.ndarray, str]], n: int) -> np.n
 
 def _fixed_words(resolver: Resolver, system: System) -> list[str]:
     words = [_zero_sentence(quantity, then) for quantity, then in resolver.assumed(system).items()]
+    words += resolver.presumed(system)
     if assumes_nitrogen_factor(resolver, system):
         words.append("nitrogen factor 6.25 assumed for the protein given")
     return words
@@ -153,23 +158,18 @@ def _missing_words(samples: Samples, resolver: Resolver, system: System) -> str:
     if not lacking:
         return "cannot be computed from what is given"
     working = resolver.signature.working
-    for symbol in system.inputs.values():
-        stated = resolver.stated.get(str(symbol.quantity))
-        if stated not in (None, working) and quantity_title(str(symbol.quantity)) in lacking:
-            basis, goal = stated.replace("_", " "), working.replace("_", " ")
-            return f"needs dry matter: {quantity_title(str(symbol.quantity))} is given per {basis}, the batch stands on {goal}"
+    if resolver.quantity("dry_matter") is None:  # given, but on a basis nothing leads away from
+        for symbol in system.inputs.values():
+            name = str(symbol.quantity)
+            stated = resolver.stated.get(name) or (resolver.stated.get("nitrogen") if name == "crude_protein" else None)
+            goal = working if symbol.basis in (None, "any") else symbol.basis
+            if stated not in (None, goal) and quantity_title(name) in lacking:
+                return (f"needs dry matter: {quantity_title(name)} is given per {stated.replace('_', ' ')}, "
+                        f"the figure is asked for per {str(goal).replace('_', ' ')}")  # fmt: skip
     other = [words for needed, given, words in NOT_THE_SAME
-             if quantity_title(needed) in lacking and given in resolver.columns]  # fmt: skip
+             if quantity_title(needed) in lacking and given in resolver.columns and needed not in resolver.columns]  # fmt: skip
     return "; ".join([f"needs {', '.join(dict.fromkeys(lacking))}: not given, nor derivable on this basis", *other])
 
 
 def _methods(system: System) -> str:
     return "; ".join(f"{c.replace('_', ' ')} {' or '.join(m)}" for c, m in system.requires_methods.items())
-
-
-def _domain(system: System) -> str:
-    return "; ".join(
-        f"{b.symbol} {'' if b.low is None else f'from {b.low:g} '}{'' if b.high is None else f'to {b.high:g} '}"
-        f"{system.symbols[b.symbol].unit if b.symbol in system.symbols else system.result_unit}"
-        for b in system.domain
-    )

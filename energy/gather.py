@@ -14,6 +14,7 @@ from energy.problems import Problem, StructuralProblems
 from energy.quantities import DISPLAY_SCALE, dictionary, method_columns, normal_form
 from energy.samples import BASIS_CODE, Samples
 from energy.tabular import RawTable
+from energy.targets import target_slug, targets_like
 from energy.units import Unit
 
 METHOD_WORDS = {
@@ -182,16 +183,11 @@ class Table:
 
     def _check_text(self, samples: Samples) -> None:
         if "target" in samples.text:
+            samples.text["target"] = np.array([target_slug(t) for t in samples.text["target"]], dtype=object)
             for i, value in enumerate(samples.text["target"]):
                 if value and value not in TARGETS:
-                    self.tell(
-                        f"the target '{value}' is not known.",
-                        f"One of: {', '.join(TARGETS)}.",
-                        i,
-                        "target",
-                        str(value),
-                        "warning",
-                    )
+                    self.tell(f"the target '{value}' is not known.", targets_like(str(value)), i, "target", str(value),
+                              "warning")  # fmt: skip
         if "food_group" in samples.text:
             for i, value in enumerate(samples.text["food_group"]):
                 if value and value not in food_groups():

@@ -30,6 +30,10 @@ BASIS_WORDS = {"as is": "as_is", "as received": "as_is", "as fed": "as_is", "as 
                **{b.replace("_", " "): b for b in BASES}}  # fmt: skip
 
 
+#: columns without a meaning whose name lets suppose that another one was meant
+PERHAPS_TARGET = ("species", "animal", "eater", "use")
+
+
 @dataclass(frozen=True)
 class Meaning:
     """What a header is. kind: text, quantity, u or unused. problem: why it cannot be used yet."""

@@ -15,6 +15,7 @@ from energy.problems import WrongUse
 from energy.quantities import normal_form
 from energy.samples import BASES, Samples
 from energy.tabular import read_table
+from energy.targets import target_slug, targets_like
 from energy.wide import WideTable
 
 
@@ -37,8 +38,9 @@ def read_samples(
     on = _basis(basis)
     if decimal not in (None, "point", "comma"):
         raise WrongUse(f"decimal = '{decimal}' is not known.", "Use 'point' or 'comma'.")
+    target = target_slug(target)
     if target is not None and target not in TARGETS:
-        raise WrongUse(f"The target '{target}' is not known.", f"One of: {', '.join(TARGETS)}.")
+        raise WrongUse(f"The target '{target}' is not known.", targets_like(target))
     forms = {normal_form(h) for h in raw.headers}
     reader = LongTable(raw, wanted, on, decimal) if forms >= long.NEEDED else WideTable(raw, wanted, on, decimal)
     samples = reader.read()

@@ -16,7 +16,7 @@ import numpy as np
 from energy import basis as bases
 from energy.algebra import Node, add, multiply, power, scale, slope, substitute
 from energy.catalogue.derived import derived_rules
-from energy.catalogue.records import Symbol, System
+from energy.catalogue.records import Bound, Symbol, System
 from energy.catalogue.tables import food_groups, table
 from energy.quantities import dictionary
 from energy.samples import BASES, Samples
@@ -71,6 +71,8 @@ def rule_choices(samples: Samples) -> dict[str, np.ndarray]:
             fits = np.ones(n, dtype=bool)
             for word in rule.requires:
                 fits &= measured.get(word, no) if word in rule.given else has(word)
+            if rule.unless_form and "form" in samples.text:
+                fits &= ~np.isin(samples.text["form"].astype(str), rule.unless_form)
             choice[fits] = number
         choice[measured.get(quantity, no)] = 0
         choices[quantity] = choice
@@ -276,6 +278,25 @@ class Resolver:
             return None
         return self._in_paper_units(self._taken_out(node, symbol.quantity, system), symbol, system)
 
+    def bound(self, bound: Bound, system: System, result: Node) -> Node | None:
+        """What a bound looks at, in the bound's own unit and on its own basis; None if it cannot be had in these rows.
+
+        result : the system's result in MJ/kg on the working basis. A homogeneous formula may be used on any basis, but
+        the range it was found in was printed on one.
+        """
+        if bound.symbol == "result":
+            node: Node | None = result
+            basis = bound.basis
+        else:
+            symbol = system.symbols[bound.symbol]
+            if symbol.quantity is None:
+                return self.lookup(symbol)
+            node = self.quantity(symbol.quantity, system.nitrogen_factor, filled=symbol.absent != "missing_input")
+            basis = symbol.basis if bound.basis in (None, "any") else bound.basis
+        if node is not None and basis not in (None, "any", self.signature.working):
+            node = bases.convert(node, self._dry(self.signature.working), self._dry(str(basis)))
+        return None if node is None else multiply(1.0 / bound.scale, node)
+
     def _in_paper_units(self, node: Node, symbol: Symbol, system: System) -> Node | None:
         """A quantity on the working basis, in the unit and on the basis of a formula's symbol."""
         working = self.signature.working
@@ -312,6 +333,15 @@ class Resolver:
                 for name, words in rule.optional.items():
                     if words and name not in settled and self._gone(name):
                         found.setdefault(name, words)
+        return found
+
+    def presumed(self, system: System) -> list[str]:
+        """What the rules a system's quantities rest on take for granted, in words."""
+        found = []
+        for symbol in system.inputs.values():
+            choice = self.choices.get(str(symbol.quantity), 0)
+            if choice > 0 and (words := derived_rules()[str(symbol.quantity)][choice - 1].assumed):
+                found.append(words)
         return found
 
     def _gone(self, quantity: str) -> bool:

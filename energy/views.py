@@ -10,7 +10,7 @@ from energy import figures, reasons
 from energy.catalogue.records import SOURCE_STATUS, System
 from energy.compare import VERDICTS
 from energy.display import basis_factor, scale_of, visible
-from energy.evaluate import STATUS
+from energy.evaluate import MISSING, STATUS
 from energy.gather import UNIT_SHOWN
 from energy.problems import WrongUse
 from energy.quantities import DISPLAY_SCALE, dictionary
@@ -59,6 +59,7 @@ def results(
     ids = a.samples.ids[rows]
     factor = basis_factor(a.samples, a.blocks.basis, a.shown.basis)
     factor = factor if isinstance(factor, float) else factor[rows]
+    off = np.isnan(factor) & np.ones(len(ids), dtype=bool)  # rows that cannot be brought to the basis shown
     pieces: dict[str, list[Any]] = {name: [] for name in RESULT_COLUMNS}
     count = 0
     for i, s in enumerate(a.choice.systems):
@@ -73,8 +74,20 @@ def results(
             ("value", a.blocks.value[i, rows] * k),
             ("u", a.blocks.u[i, rows] * k),
             ("leading", leading_shown(a, i)[rows]),
-            ("status", np.array(STATUS, dtype=object)[a.blocks.status[i, rows]]),
-            ("reason", figures.figure_reasons(a, i)[rows]),
+            (
+                "status",
+                np.array(STATUS, dtype=object)[
+                    np.where(off & ~bool(own), np.maximum(a.blocks.status[i, rows], MISSING), a.blocks.status[i, rows])
+                ],
+            ),
+            (
+                "reason",
+                np.where(
+                    off & ~bool(own) & (a.blocks.status[i, rows] < MISSING),
+                    f"needs dry matter to be shown per {a.shown.basis.replace('_', ' ')}",
+                    figures.figure_reasons(a, i)[rows],
+                ),
+            ),
         ):
             pieces[name].append(values)
         for name, text in (
@@ -290,11 +303,7 @@ def wide(a: Assessment, quantity: str) -> pd.DataFrame:
 
 def equation_row(s: System) -> dict[str, Any]:
     """One line of the catalogue's table."""
-    domain = "; ".join(
-        f"{b.symbol} {'' if b.low is None else f'from {b.low:g} '}{'' if b.high is None else f'to {b.high:g} '}"
-        f"{s.symbols[b.symbol].unit if b.symbol in s.symbols else s.result_unit}"
-        for b in s.domain
-    )
+    domain = "; ".join(b.words for b in s.domain)
     return {
         "id": s.id,
         "title": s.title,

@@ -8,9 +8,9 @@ import numpy as np
 
 from energy import cells
 from energy.gather import Table, texts_or_none
-from energy.headers import Meaning, read_header
+from energy.headers import PERHAPS_TARGET, Meaning, read_header
 from energy.problems import Problem
-from energy.quantities import dictionary
+from energy.quantities import dictionary, normal_form
 from energy.samples import BASIS_CODE, Samples
 
 
@@ -31,8 +31,10 @@ class WideTable(Table):
                 self.text[str(m.quantity)] = texts_or_none(self.raw.cells[:, k])
             elif m.kind == "unused":
                 self.text.setdefault(m.header, texts_or_none(self.raw.cells[:, k]))
-                self.problems.append(Problem("this column is not used.", "Nothing to do; it is kept as a note.",
-                                             self.raw.where, None, m.header, None, "warning"))  # fmt: skip
+                cure = ("Call it 'target' if it says for whom the energy is meant; it is kept as a note."
+                        if normal_form(m.header) in PERHAPS_TARGET else "Nothing to do; it is kept as a note.")  # fmt: skip
+                self.problems.append(Problem("this column is not used.", cure, self.raw.where, None, m.header, None,
+                                             "warning"))  # fmt: skip
             if m.implied_method:
                 column = dictionary()[str(m.quantity)].method_column
                 self.text.setdefault(str(column), np.full(len(self.ids), m.implied_method, dtype=object))

@@ -16,6 +16,7 @@ LAYERS = [
     ["energy.catalogue.reader"],
     ["energy.feedlaw"],
     ["energy.samples"],
+    ["energy.targets", "energy.consistency"],
     ["energy.silage"],
     ["energy.tabular", "energy.cells", "energy.headers", "energy.uncertainty", "energy.gather"],
     ["energy.wide", "energy.long"],

@@ -27,6 +27,8 @@ def derived_rules() -> dict[str, tuple[DerivedRule, ...]]:
                 words=entry["words"],
                 source=entry["source"],
                 source_status=entry["source_status"],
+                unless_form=tuple(entry.get("unless_form", ())),
+                assumed=str(entry.get("assumed", "")),
             )
         )
     return {name: tuple(found) for name, found in rules.items()}

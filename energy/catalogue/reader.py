@@ -378,19 +378,32 @@ def _equation(entry: Mapping[str, Any], publication: Publication, path: Path) ->
     unknown = sorted((formula.symbols | (heats.symbols if heats else frozenset())) - set(symbols))
     if unknown:
         raise CatalogueProblem(where, f"the formula uses {', '.join(unknown)}.", "Say what they are under symbols.")
-    bounds = []
-    for b in entry.get("domain", ()):
-        if b.get("symbol") not in symbols and b.get("symbol") != "result":
-            raise CatalogueProblem(where, f"the domain names '{b.get('symbol')}'.", "Use one of the entry's symbols.")
-        low, high = (None if b.get(k) is None else _number(b[k], k, where) for k in ("low", "high"))
-        bounds.append(Bound(b["symbol"], low, high, str(b.get("locator", ""))))
+    # a share, a ratio or an amount per head stands on no basis
+    basis = "any" if any_basis or dimension in ("fraction", "mass") else (unit.basis or "as_is")
+    answer = Symbol(name="result", unit=str(entry["result"]), scale=unit.scale, basis=basis)
+    bounds = [_bound(b, symbols | {"result": answer}, dimension, where) for b in entry.get("domain", ())]
     spoken_of = formula.symbols | (heats.symbols if heats else frozenset()) | {b.symbol for b in bounds}
     unused = sorted(set(symbols) - spoken_of)
     if unused:
         raise CatalogueProblem(where, f"symbols never used: {', '.join(unused)}.", "Take them out.")
-    # a share, a ratio or an amount per head stands on no basis
-    basis = "any" if any_basis or dimension in ("fraction", "mass") else (unit.basis or "as_is")
     return [_system_of(common, entry, formula, heats, symbols, unit, basis, bounds)]
+
+
+def _bound(entry: Mapping[str, Any], symbols: Mapping[str, Symbol], dimension: str, where: str) -> Bound:
+    """A limit of validity; in the unit of its symbol, or in one of its own where the paper prints it in another."""
+    symbol = symbols.get(str(entry.get("symbol")))
+    if symbol is None:
+        what = f"the domain names '{entry.get('symbol')}'."
+        raise CatalogueProblem(where, what, "Use one of the entry's symbols, or 'result'.")
+    low, high = (None if entry.get(k) is None else _number(entry[k], k, where) for k in ("low", "high"))
+    text, scale, basis = symbol.unit, symbol.scale, symbol.basis
+    if "unit" in entry:
+        text = str(entry["unit"])
+        known = dictionary().get(str(symbol.quantity))
+        kind = known.dimension if known else "mass_fraction" if symbol.quantity else dimension
+        unit = _unit(text, kind, where)
+        scale, basis = unit.scale, unit.basis
+    return Bound(symbol.name, low, high, str(entry.get("locator", "")), text, scale, basis)
 
 
 def _system_of(

@@ -80,12 +80,25 @@ class Symbol:
 
 @dataclass(frozen=True)
 class Bound:
-    """A limit of validity, in the symbol's unit. symbol : of the formula, of the entry's symbols, or "result"."""
+    """A limit of validity. symbol : of the formula, of the entry's symbols, or "result".
+
+    unit : as printed, with its basis; value in that unit = internal value / scale. basis : None or "any" where the
+    paper names none: then that on which the symbol is used.
+    """
 
     symbol: str
     low: float | None = None
     high: float | None = None
     locator: str = ""
+    unit: str = ""
+    scale: float = 1.0
+    basis: str | None = None
+
+    @property
+    def words(self) -> str:
+        """The bound as people read it: symbol, from, to, unit and basis."""
+        ends = [word.format(x) for word, x in (("from {:g}", self.low), ("to {:g}", self.high)) if x is not None]
+        return " ".join([self.symbol, *ends, self.unit.removesuffix(" any basis").removesuffix(" any")])
 
 
 @dataclass(frozen=True)
@@ -226,7 +239,11 @@ def _degree_one(system: System) -> bool:
 
 @dataclass(frozen=True)
 class DerivedRule:
-    """One way to get a quantity from others; formula in internal units on the working basis."""
+    """One way to get a quantity from others; formula in internal units on the working basis.
+
+    unless_form : texts of the column `form` for which the rule does not hold. assumed : what a result that rests on it
+    must say, "" where nothing is assumed.
+    """
 
     quantity: str
     formula: Formula
@@ -236,3 +253,5 @@ class DerivedRule:
     words: str
     source: str
     source_status: str
+    unless_form: tuple[str, ...] = ()
+    assumed: str = ""
