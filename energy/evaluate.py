@@ -18,11 +18,10 @@ from energy import algebra
 from energy.algebra import Node
 from energy.catalogue.derived import derived_rules
 from energy.catalogue.records import System
-from energy.quantities import dictionary
+from energy.programs import CHUNK, compile_roots, leaf, take
 from energy.resolve import Parameter, Resolver, Signature, signatures
 from energy.samples import Samples
 
-CHUNK = 16_384
 #: worst last
 STATUS = (
     "ok", "assumed", "outside_domain", "method_mismatch", "implausible", "missing_input", "missing_factor", "not_admissible",
@@ -36,10 +35,6 @@ ROW_AMOUNT = {
     "fat": "crude_fat",
     "carbohydrate": "carbohydrate_all",
     "alcohol": "alcohol",
-}
-
-_FUNCTIONS: dict[str, Any] = {
-    name: getattr(np, name) for name in ("exp", "log", "sqrt", "minimum", "maximum", "where", "power")
 }
 
 
@@ -107,7 +102,6 @@ class SystemStatus:
     bounds: tuple[tuple[str, float | None, float | None], ...] = ()
 
 
-PARTS = ("difference", "measurement", "heats", "convention")
 PAIR_OUTPUTS = (
     "difference", "u_difference", "measurement", "u_measurement", "u_model", "heats", "convention", "at_heats",
 )  # fmt: skip
@@ -134,7 +128,7 @@ def plan(signature: Signature, columns: frozenset[str], systems: tuple[BySystem,
         _system_status(resolver, s, node, i, roots) for i, (s, node) in enumerate(zip(chosen, nodes, strict=True))
     )
     ready = [(p, index[pair.bomb], index[pair.composition]) for p, pair in enumerate(pairs) if ("at_heats", p) in roots]
-    run, inputs, outputs = _compile(roots, ready)
+    run, inputs, outputs = compile_roots(roots, ready)
     return Plan(
         run=run,
         inputs=inputs,
@@ -279,51 +273,6 @@ def assumes_nitrogen_factor(resolver: Resolver, system: System) -> bool:
     return uses and as_protein
 
 
-def _compile(
-    roots: Mapping[tuple[str, int], Node], pairs: Sequence[tuple[int, int, int]]
-) -> tuple[Callable[[list[np.ndarray], list[np.ndarray]], None], tuple[str, ...], tuple[tuple[str, int], ...]]:
-    """One numpy function for all roots. pairs: (pair, row of the bomb system, row of the composition system)."""
-    inputs = tuple(sorted(set().union(*(algebra.names(n) for n in roots.values()))))
-    variables = {name: f"v{k}" for k, name in enumerate(inputs)}
-    source = algebra.Source(roots.values(), variables)
-    place: dict[tuple[str, int], int] = {}
-    for key in [k for k in roots if k[0] != "at_own"] + [(kind, p) for p, _, _ in pairs for kind in PARTS]:
-        place[key] = len(place)
-    lines: list[str] = []
-    for key, node in roots.items():
-        text = source.text(node)
-        lines.extend(source.lines)
-        source.lines.clear()
-        lines.append(f"own{key[1]} = {text}" if key[0] == "at_own" else f"out[{place[key]}][...] = {text}")
-    for p, b, c in pairs:
-        bomb, composition = f"out[{place['value', b]}]", f"out[{place['value', c]}]"
-        at_heats = f"out[{place['at_heats', p]}]"
-        lines += [
-            f"out[{place['difference', p]}][...] = {bomb} - {composition}",
-            f"out[{place['measurement', p]}][...] = {bomb} - {at_heats}",
-            f"out[{place['heats', p]}][...] = {at_heats} - own{p}",
-            f"out[{place['convention', p]}][...] = own{p} - {composition}",
-        ]
-    body = ["def run(v, out):", *(f"    {variables[n]} = v[{k}]" for k, n in enumerate(inputs))]
-    body += [f"    {line}" for line in lines] or ["    pass"]
-    space: dict[str, Any] = {}
-    # our own text: registered names, numbers and the functions above, nothing else can be in it
-    exec(compile("\n".join(body), "<systems>", "exec"), {"__builtins__": {}, **_FUNCTIONS}, space)
-    return space["run"], inputs, tuple(place)
-
-
-def values_of(samples: Samples, resolver: Resolver, nodes: Sequence[Node], rows: np.ndarray) -> np.ndarray:
-    """(nodes, len(rows)): expressions in measured columns, for rows of the resolver's own signature."""
-    run, inputs, _ = _compile({("value", k): node for k, node in enumerate(nodes)}, [])
-    leaves, codes = [_leaf(samples, name) for name in inputs], samples.memo.get("group_codes")
-    out = np.empty((len(nodes), len(rows)))
-    for low in range(0, len(rows), CHUNK):
-        here = rows[low : low + CHUNK]
-        run([_take(leaf, name, resolver.parameters, here, codes) for leaf, name in zip(leaves, inputs, strict=True)],
-            [line[low : low + CHUNK] for line in out])  # fmt: skip
-    return out
-
-
 # ---- running it -----------------------------------------------------------------------------------------------
 
 
@@ -350,7 +299,7 @@ def evaluate(samples: Samples, systems: Sequence[System], pairs: Sequence[Pair] 
 
 def _run(samples: Samples, plan: Plan, rows: np.ndarray | None, blocks: Blocks) -> None:
     n = len(samples) if rows is None else len(rows)
-    leaves = [_leaf(samples, name) for name in plan.inputs]
+    leaves = [leaf(samples, name) for name in plan.inputs]
     codes = samples.memo.get("group_codes")
     contributions = [_contributions(samples, status) for status in plan.status]
     outside = [key for key in plan.outputs if key[0].startswith(("amount", "domain"))]
@@ -359,7 +308,7 @@ def _run(samples: Samples, plan: Plan, rows: np.ndarray | None, blocks: Blocks) 
         high = min(low + CHUNK, n)
         here: Any = slice(low, high) if rows is None else rows[low:high]
         inputs = [
-            _take(leaf, name, plan.parameters, here, codes) for leaf, name in zip(leaves, plan.inputs, strict=True)
+            take(column, name, plan.parameters, here, codes) for column, name in zip(leaves, plan.inputs, strict=True)
         ]
         direct = rows is None
         out = [_target(blocks, key, here, direct, spare, high - low) for key in plan.outputs]
@@ -375,39 +324,6 @@ def _run(samples: Samples, plan: Plan, rows: np.ndarray | None, blocks: Blocks) 
             if ("at_heats", q) not in computed:
                 for name in PAIR_OUTPUTS:
                     getattr(blocks, name)[q, here] = np.nan
-
-
-def _leaf(samples: Samples, name: str) -> np.ndarray | None:
-    """The array behind a name: a column, a column filled with zeros, or a standard uncertainty."""
-    if name.startswith(("@", "V@")):
-        return None
-    if name.startswith("U:"):
-        column = name[2:].removesuffix("?")
-        array = samples.u.get(column, np.full(len(samples), np.nan))
-        return _filled(samples, "U:" + column, array, dictionary()[column].absent_u) if name.endswith("?") else array
-    if name.endswith("?"):
-        column = name[:-1]
-        return _filled(samples, column, samples.columns[column], 6.25 if column == "nitrogen_factor" else 0.0)
-    return samples.columns[name]
-
-
-def _filled(samples: Samples, key: str, array: np.ndarray, fill: float) -> np.ndarray:
-    """The column with `fill` where it is empty; made once per batch."""
-    memo: dict[str, np.ndarray] = samples.memo.setdefault("filled", {})
-    if key not in memo:
-        empty = np.isnan(array)
-        memo[key] = np.where(empty, fill, array) if empty.any() else array
-    return memo[key]
-
-
-def _take(
-    leaf: np.ndarray | None, name: str, parameters: Mapping[str, Parameter], here: Any, codes: np.ndarray | None
-) -> np.ndarray:
-    if leaf is not None:
-        return leaf[here]
-    assert codes is not None
-    parameter = parameters[name.removeprefix("V")]
-    return np.take(parameter.variances if name.startswith("V") else parameter.values, codes[here])
 
 
 def _target(

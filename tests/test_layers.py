@@ -22,6 +22,7 @@ LAYERS = [
     ["energy.wide", "energy.long"],
     ["energy.intake"],
     ["energy.resolve"],
+    ["energy.programs"],
     ["energy.evaluate"],
     ["energy.display"],
     ["energy.compare"],
