@@ -17,7 +17,7 @@ from energy.problems import EnergyError, StructuralProblems
 if TYPE_CHECKING:
     from energy.assessment import Assessment
 
-VERDICTS = ("concordant", "biased", "inconclusive", "discordant", "single_route", "not_computed")
+VERDICTS = ("concordant", "biased", "inconclusive", "discordant", "screening", "single_route", "not_computed")
 DEMO_FOLDER = "energy-demo"
 
 

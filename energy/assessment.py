@@ -9,17 +9,29 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from energy import consistency, display, order, reasons, views
+from energy import consistency, display, order, reasons, sensitivity, views
 from energy import partition as partitions
 from energy.balance import Balances
 from energy.balance import balances as draw_up
-from energy.catalogue import reader
+from energy.catalogue import reader, tables
 from energy.catalogue.records import TARGETS, System
-from energy.choice import Choice, Wanted, choose, choose_shipped
-from energy.compare import NOT_COMPUTED, SINGLE_ROUTE, verdict_codes
+from energy.causes import Causes, texts, to_decide
+from energy.choice import Choice, Wanted, choose, choose_shipped, house_limit
+from energy.compare import (
+    BIASED,
+    CONCORDANT,
+    DISCORDANT,
+    INCONCLUSIVE,
+    NOT_COMPUTED,
+    SCREENING,
+    SINGLE_ROUTE,
+    coverage_of,
+    verdict_codes,
+)
 from energy.evaluate import MISSING, Blocks, evaluate
+from energy.matrices import matrices
 from energy.problems import Problem, WrongUse
-from energy.samples import Samples
+from energy.samples import Samples, by_near_infrared
 from energy.targets import target_slug, targets_like
 
 if TYPE_CHECKING:
@@ -180,30 +192,58 @@ class Assessment:
         return consistency.find(self.samples, feed=self.target not in ("human", "none"))
 
     @cached_property
-    def width(self) -> np.ndarray:
-        """(pairs, n) half-width of the practical limit, MJ/kg."""
-        return np.array([self.choice.limit.width(row) for row in self.blocks.at_heats]).reshape(
-            self.blocks.at_heats.shape
-        )
+    def edges(self) -> tuple[np.ndarray, np.ndarray]:
+        """(pairs, n) lower and upper practical limit of the measurement part, MJ/kg on the working basis.
+
+        A law states its tolerance per mass as it is; where a batch knows dry matter only, the target's own limit holds.
+        """
+        lower, upper = np.empty_like(self.blocks.at_heats), np.empty_like(self.blocks.at_heats)
+        for p, (limit, reference) in enumerate(zip(self.choice.limits, self.blocks.at_heats, strict=True)):
+            if limit.as_is and self.blocks.basis != "as_is":
+                limit = house_limit(tables.targets()[self.target])
+            lower[p], upper[p] = limit.edges(reference)
+        return lower, upper
+
+    @cached_property
+    def coverage_factor(self) -> np.ndarray:
+        """(pairs, n) what u is multiplied by: the coverage asked for, or Student's t where degrees of freedom are few."""
+        freedom = sensitivity.freedom(self.samples, self.blocks.pairs, self.catalogue)
+        return coverage_of(self.coverage, freedom)
 
     @cached_property
     def verdict(self) -> np.ndarray:
         """(pairs, n) int8 index into compare.VERDICTS."""
-        b = self.blocks
+        b, (lower, upper) = self.blocks, self.edges
         found = np.empty(b.measurement.shape, dtype=np.int8)
+        near_infrared = by_near_infrared(self.samples)
         with np.errstate(invalid="ignore"):
             for p, pair in enumerate(b.pairs):
                 u = np.hypot(b.u_measurement[p], b.u_model[p])
-                found[p] = verdict_codes(b.measurement[p], u, -self.width[p], self.width[p], self.coverage)
+                found[p] = verdict_codes(b.measurement[p], u, lower[p], upper[p], self.coverage_factor[p])
+                found[p][near_infrared & np.isin(found[p], (CONCORDANT, BIASED, DISCORDANT))] = SCREENING
                 have = [b.status[b.row(x)] < MISSING for x in (pair.bomb, pair.composition)]
                 found[p][have[0] ^ have[1]] = SINGLE_ROUTE
                 found[p][~have[0] & ~have[1]] = NOT_COMPUTED
         return found
 
     @cached_property
-    def causes(self) -> tuple[np.ndarray, np.ndarray]:
-        """(n,) probable cause and next measurement, '' where there is nothing to explain."""
+    def tried(self) -> Causes:
+        """Every handling error weighed on the samples that need an explanation."""
         return reasons.causes(self)
+
+    @cached_property
+    def causes(self) -> tuple[np.ndarray, np.ndarray]:
+        """(n,) probable cause and next measurement, '' where there is nothing to explain or to decide."""
+        cause, following = texts(self.tried, len(self.samples))
+        if len(self.verdict):
+            undecided = np.flatnonzero((self.verdict[0] == INCONCLUSIVE) & (following == ""))
+            m = matrices(self.samples, self.catalogue[self.blocks.pairs[0].heats], undecided)
+            following[m.rows] = to_decide(m)
+        return cause, following
+
+    def probable_causes(self, sample_id: str) -> pd.DataFrame:
+        """What was tried on a sample, likeliest first: size, corrected figures, whether it closes, its share."""
+        return views.probable_causes(self, sample_id)
 
     @cached_property
     def balance(self) -> Balances:
@@ -269,6 +309,21 @@ class Assessment:
     def explain(self, sample_id: str) -> pd.DataFrame:
         """The three parts of a sample's difference, line by line."""
         return reasons.explain(self, sample_id)
+
+    def budget(self, sample_id: str, system: str) -> pd.DataFrame:
+        """Which input carries how much of the uncertainty of one figure."""
+        return sensitivity.budget(self, sample_id, system)
+
+    def covariance(self, sample_id: str) -> pd.DataFrame:
+        """Covariance of every two figures of a sample by the inputs they share, (MJ/kg)^2 on the working basis."""
+        import pandas as pd
+
+        one = self.samples.take(np.array([self.index(sample_id)]))
+        able = [
+            s for s in self.choice.systems if self.blocks.status[self.blocks.row(s.id), self.index(sample_id)] < MISSING
+        ]
+        rows = [[sensitivity.covariance_of(one, x, y)[0] for y in able] for x in able]
+        return pd.DataFrame(rows, index=[s.id for s in able], columns=[s.id for s in able])
 
     def partition(self, sample_id: str) -> pd.DataFrame:
         """GE, each loss, and what is left, by both routes."""

@@ -11,7 +11,7 @@ from typing import Any
 from energy.catalogue import reader, tables
 from energy.catalogue.derived import derived_rules
 from energy.catalogue.records import System
-from energy.compare import Limit, read_limit
+from energy.compare import Limit, even, read_limit
 from energy.evaluate import Pair
 from energy.problems import WrongUse
 
@@ -36,7 +36,8 @@ class Wanted:
 class Choice:
     """What is computed for a batch: systems in order, pairs that are compared, and the rule for the leading figure.
 
-    leading : per stage, ids in order of preference.
+    leading : per stage, ids in order of preference. limits : one per pair; the first, on the gross energy, is the one that
+    is spoken of.
     """
 
     target: str
@@ -44,7 +45,12 @@ class Choice:
     systems: tuple[System, ...]
     pairs: tuple[Pair, ...]
     leading: dict[str, tuple[str, ...]]
-    limit: Limit
+    limits: tuple[Limit, ...]
+
+    @property
+    def limit(self) -> Limit:
+        """The practical limit on the gross energy."""
+        return self.limits[0]
 
 
 def choose_shipped(wanted: Wanted, columns: frozenset[str]) -> Choice:
@@ -99,7 +105,7 @@ def choose(catalogue: dict[str, System], wanted: Wanted, columns: frozenset[str]
         systems=chosen,
         pairs=tuple(dict.fromkeys(pairs)),
         leading=_leading(chosen, against, bombs, bool(law or wanted.composition_system)),
-        limit=_limit(catalogue, wanted, default),
+        limits=tuple(_limit(catalogue, wanted, default, pair) for pair in dict.fromkeys(pairs)),
     )
 
 
@@ -188,12 +194,20 @@ def _leading(
     return {stage: tuple(ids) for stage, ids in found.items()}
 
 
-def _limit(catalogue: Mapping[str, System], wanted: Wanted, default: Mapping[str, Any]) -> Limit:
-    """The user's practical limit, else the law's energy tolerance, else the target's default."""
+def _limit(catalogue: Mapping[str, System], wanted: Wanted, default: Mapping[str, Any], pair: Pair) -> Limit:
+    """The user's practical limit, else the energy tolerance of the law compared with, else the target's default.
+
+    A law's tolerance speaks of its own energy, not of the gross energy.
+    """
     if wanted.limit is not None:
         return read_limit(wanted.limit)
-    tolerance = catalogue[wanted.law].tolerance if wanted.law is not None and wanted.law in catalogue else None
+    tolerance = catalogue[pair.composition].tolerance if pair.composition == wanted.law else None
     if tolerance is not None and tolerance.absolute is not None:
-        return Limit(0.0, tolerance.absolute, 0.0, f"the law's tolerance, {tolerance.words}")
-    floor = float(default.get("limit_floor_kJ_per_100g", 0.0)) * 0.01
-    return Limit(float(default["limit_act"]), floor, float(default["limit_look"]), str(default["reason"]))
+        return even(0.0, tolerance.absolute, 0.6, f"the law's tolerance, {tolerance.words}", as_is=True)
+    return house_limit(default)
+
+
+def house_limit(default: Mapping[str, Any]) -> Limit:
+    """A target's own limit."""
+    act, floor = float(default["limit_act"]), float(default.get("limit_floor_kJ_per_100g", 0.0)) * 0.01
+    return even(act, floor, float(default["limit_look"]) / act, str(default["reason"]))

@@ -200,6 +200,17 @@ def _pair_roots(
     roots["u_model", p] = algebra.apply("sqrt", algebra.multiply(algebra.power(gain, 2.0), model))
 
 
+def measurement_node(resolver: Resolver, pair: Pair, catalogue: Mapping[str, System]) -> tuple[Node, Node] | None:
+    """The measurement part of a pair and the variance that the heats give it; None if it cannot be had in these rows."""
+    system, heats = catalogue[pair.bomb], catalogue[pair.heats]
+    bomb, best = resolver.system(system), resolver.system(heats)
+    at_heats = None if best is None else resolver.system(system, gross_energy=best)
+    if bomb is None or at_heats is None:
+        return None
+    gain = _gross_energy_gain(resolver, system, best)
+    return algebra.subtract(bomb, at_heats), algebra.multiply(algebra.power(gain, 2.0), resolver.model_variance(heats))
+
+
 def _gross_energy_gain(resolver: Resolver, system: System, at: Node) -> Node:
     """Slope of a bomb system's result with respect to gross energy, both in MJ/kg, where that is `at`."""
     probe = "gross energy"

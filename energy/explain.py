@@ -1,4 +1,4 @@
-"""Why a difference: its parts by component, and handling errors as hypotheses that are tried on the figures.
+"""Why a difference: its three parts by component.
 
 A part is a function of component amounts that doubles when all amounts double, so that amount times slope, summed
 over the components, is the part itself (Euler's theorem on homogeneous functions).
@@ -7,8 +7,6 @@ over the components, is the part itself (Euler's theorem on homogeneous function
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
-from functools import cache
 from typing import Any
 
 import numpy as np
@@ -16,14 +14,11 @@ import numpy as np
 from energy import algebra
 from energy.algebra import Node
 from energy.catalogue.derived import derived_rules
-from energy.catalogue.reader import systems
 from energy.catalogue.records import System
 from energy.evaluate import Pair
 from energy.quantities import dictionary
 from energy.resolve import ASSUMED_NITROGEN_FACTOR, Resolver, Signature, signatures
 from energy.samples import Samples
-
-JOULE_PER_CALORIE = 4.184
 
 #: components a part is told in, and what people call them
 COMPONENTS = {
@@ -198,190 +193,3 @@ def _at(node: Node, point: Mapping[str, float]) -> float:
         "exp": np.exp, "log": np.log, "sqrt": np.sqrt,
     }  # fmt: skip
     return float(functions[head](*args))
-
-
-# ---- handling errors as hypotheses ----------------------------------------------------------------------------
-
-
-@dataclass(frozen=True)
-class Facts:
-    """What the hypotheses look at: (n,) arrays, energies in MJ/kg, amounts in kg/kg on the working basis."""
-
-    measured: np.ndarray
-    computed: np.ndarray
-    u: np.ndarray
-    limit: np.ndarray
-    dry_matter: np.ndarray
-    fibre: np.ndarray
-    mass_sum: np.ndarray
-    available_given: np.ndarray
-    ether_extract: np.ndarray
-    on_dry_matter: np.ndarray
-    may_hold_urea: np.ndarray  # a ruminant's feed whose urea was not determined
-    ash_of_dry_matter: np.ndarray
-
-
-@dataclass(frozen=True)
-class Hypothesis:
-    """A handling error: the corrected measured and computed GE, where it can apply, and what to say and do.
-
-    prior : how common it is, from 0 to 1 (our own judgement). `words` may hold {amount}.
-    """
-
-    id: str
-    prior: float
-    measured: Callable[[Facts], np.ndarray]
-    computed: Callable[[Facts], np.ndarray]
-    applies: Callable[[Facts], np.ndarray]
-    amount: Callable[[Facts], np.ndarray]
-    words: str
-    next_measurement: str
-
-
-def _same_measured(f: Facts) -> np.ndarray:
-    return f.measured
-
-
-def _same_computed(f: Facts) -> np.ndarray:
-    return f.computed
-
-
-def _always(f: Facts) -> np.ndarray:
-    return np.ones(len(f.measured), dtype=bool)
-
-
-@cache
-def heat(symbol: str) -> float:
-    """A general heat of ge_heats_best in MJ/kg: hp protein, hf fat, hc carbohydrate, hfi fibre."""
-    found = systems()["ge_heats_best"].symbols[symbol]
-    value = found.constant if found.constant is not None else found.fallback
-    if value is None:
-        raise KeyError(symbol)
-    return value * found.scale
-
-
-@cache
-def feed_heat(symbol: str) -> float:
-    """A heat of ge_heats_feed in MJ/kg: hp protein, hn nitrogen-free extract, hur urea."""
-    found = systems()["ge_heats_feed"].symbols[symbol]
-    if found.constant is None:
-        raise KeyError(symbol)
-    return found.constant * found.scale
-
-
-def needed_by_difference(gap: float) -> tuple[float, float, float]:
-    """kg/kg of moisture, fat, protein that would each alone make a gap in GE (MJ/kg), carbohydrate by difference."""
-    return gap / heat("hc"), gap / (heat("hf") - heat("hc")), gap / (heat("hp") - heat("hc"))
-
-
-def _missing_fat(f: Facts) -> np.ndarray:
-    """kg fat per kg that must sit in carbohydrate by difference instead."""
-    return (f.measured - f.computed) / (heat("hf") - heat("hc"))
-
-
-def _urea(f: Facts) -> np.ndarray:
-    """kg urea per kg that must stand in crude protein (N x 6.25) instead: its protein burns, it does not."""
-    protein, rest, urea = (feed_heat(x) for x in ("hp", "hn", "hur"))
-    return (f.computed - f.measured) / (2.91541 * protein - 1.91541 * rest - urea)
-
-
-def _powder_moisture(f: Facts) -> np.ndarray:
-    return 1 - f.measured / f.computed
-
-
-# fmt: off
-HYPOTHESES = (
-    Hypothesis("kcal_as_kJ", 0.9, lambda f: f.measured * JOULE_PER_CALORIE, _same_computed, _always,
-               lambda f: f.measured / f.computed,
-               "the gross energy looks like kilocalories entered as kilojoules "
-               "(measured/computed = {amount:.3f}; 1/4.184 = 0.239)",
-               "compare the bomb sheet with the table: which unit was printed?"),
-    Hypothesis("kJ_as_kcal", 0.9, lambda f: f.measured / JOULE_PER_CALORIE, _same_computed, _always,
-               lambda f: f.measured / f.computed,
-               "the gross energy looks like kilojoules entered as kilocalories "
-               "(measured/computed = {amount:.3f}; expected 4.184)",
-               "compare the bomb sheet with the table: which unit was printed?"),
-    Hypothesis("decimal_slip_up", 0.5, lambda f: f.measured / 10, _same_computed, _always,
-               lambda f: f.measured / f.computed, "the gross energy is ten times too large (decimal point)",
-               "compare the bomb sheet with the table"),
-    Hypothesis("decimal_slip_down", 0.5, lambda f: f.measured * 10, _same_computed, _always,
-               lambda f: f.measured / f.computed, "the gross energy is ten times too small (decimal point)",
-               "compare the bomb sheet with the table"),
-    Hypothesis("dry_matter_as_is", 0.8, lambda f: f.measured * f.dry_matter, _same_computed,
-               lambda f: ~f.on_dry_matter & (f.dry_matter < 0.97), lambda f: 100 * f.dry_matter,
-               "the gross energy fits dry matter, not the material as it is (dry matter {amount:.1f} %)",
-               "ask on which basis the bomb value was reported"),
-    Hypothesis("as_is_as_dry_matter", 0.6, lambda f: f.measured / f.dry_matter, _same_computed,
-               lambda f: f.on_dry_matter & (f.dry_matter < 0.97), lambda f: 100 * f.dry_matter,
-               "the gross energy fits the material as it is, not dry matter (dry matter {amount:.1f} %)",
-               "ask on which basis the bomb value was reported"),
-    Hypothesis("powder_moisture_forgotten", 0.6, _same_computed, _same_computed,
-               lambda f: f.on_dry_matter & (_powder_moisture(f) > 0.02) & (_powder_moisture(f) < 0.1),
-               lambda f: 100 * _powder_moisture(f),
-               "the powder's residual moisture was probably left out: "
-               "{amount:.1f} % of water in the powder would explain it",
-               "determine the moisture of the powder that was burned, on the day of the pellets"),
-    Hypothesis("fibre_twice", 0.7, _same_measured, lambda f: f.computed - heat("hfi") * f.fibre,
-               lambda f: f.available_given & (f.fibre > 0.005)
-               & (np.isnan(f.mass_sum) | (np.abs(f.mass_sum - 1 - f.fibre) < 0.5 * f.fibre)),
-               lambda f: 100 * f.fibre,
-               "the available carbohydrate seems to hold the fibre already: {amount:.1f} g per 100 g are counted twice",
-               "look whether 'carbohydrate' on the certificate is with or without fibre"),
-    Hypothesis("ether_extract", 0.95, _same_measured, _same_measured,
-               lambda f: f.ether_extract & (_missing_fat(f) > 0.005) & (_missing_fat(f) < 0.12),
-               lambda f: 100 * _missing_fat(f),
-               "fat was extracted without acid hydrolysis: {amount:.1f} g of bound fat per 100 g, "
-               "now inside carbohydrate by difference, would explain it",
-               "repeat the fat determination with acid hydrolysis"),
-    Hypothesis("urea_as_protein", 0.7, _same_measured, _same_measured,
-               lambda f: f.may_hold_urea & (_urea(f) > 0.004) & (_urea(f) < 0.05),
-               lambda f: 100 * _urea(f),
-               "non-protein nitrogen counted as protein: {amount:.1f} g of urea per 100 g would explain it",
-               "determine urea or ammonia nitrogen and give it as urea or non-protein nitrogen"),
-    Hypothesis("high_ash", 0.75, _same_measured, _same_measured,
-               lambda f: (f.ash_of_dry_matter > 0.12) & (f.measured < f.computed) & (f.measured > 0.88 * f.computed),
-               lambda f: 100 * f.ash_of_dry_matter,
-               "ash is {amount:.1f} % of dry matter: a charge that did not burn out, or carbonate that took up heat, "
-               "would explain it",
-               "look for soot, repeat with a combustion aid of known heat, and determine carbonate in the ash"),
-)
-# fmt: on
-
-
-def rank(facts: Facts, rows: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """Probable cause and next measurement, as texts, for the rows marked; empty elsewhere.
-
-    A hypothesis closes a difference if the corrected figures differ by less than the practical limit. Among those
-    that close, the one with the largest prior * likelihood of the remaining difference is named; a cause that tunes
-    an amount to fit (fat, moisture) closes by construction and competes by its prior alone.
-    """
-    n = len(facts.measured)
-    best = np.zeros(n)
-    cause = np.full(n, "", dtype=object)
-    following = np.full(n, "", dtype=object)
-    with np.errstate(all="ignore"):
-        for h in HYPOTHESES:
-            remaining = h.measured(facts) - h.computed(facts)
-            closes = rows & h.applies(facts) & (np.abs(remaining) <= facts.limit)
-            weight = np.where(closes, h.prior * np.exp(-0.5 * (remaining / facts.u) ** 2), 0.0)
-            better = weight > np.maximum(best, 1e-6)
-            amount = h.amount(facts)
-            for i in np.flatnonzero(better):
-                cause[i] = h.words.format(amount=amount[i])
-                following[i] = h.next_measurement
-            best = np.where(better, weight, best)
-        _by_size(facts, rows & (best == 0), cause, following)
-    return cause, following
-
-
-def _by_size(facts: Facts, rows: np.ndarray, cause: np.ndarray, following: np.ndarray) -> None:
-    """No hypothesis fits: what each determination would have to be wrong by (g per 100 g), largest lever first."""
-    gap = facts.measured - facts.computed
-    for i in np.flatnonzero(rows):
-        moisture, fat, protein = (100 * x for x in needed_by_difference(float(gap[i])))
-        cause[i] = (
-            f"nothing specific fits; alone, {abs(moisture):.1f} g of moisture (too {'high' if gap[i] > 0 else 'low'}), "
-            f"{abs(fat):.1f} g of fat or {abs(protein):.1f} g of protein (too {'low' if gap[i] > 0 else 'high'}) "
-            "per 100 g would explain it"
-        )
-        following[i] = "repeat the moisture of the sample, then fat; a determined carbohydrate would tell them apart"

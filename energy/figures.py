@@ -30,6 +30,14 @@ NOT_THE_SAME = (
     ("ndf", "crude_fibre", "crude fibre is not NDF and is not taken for it"),
 )
 
+#: a basis in the middle of a sentence
+ON = {
+    "as_is": "as is",
+    "dry_matter": "per dry matter",
+    "as_analysed": "as analysed",
+    "organic_matter": "per organic matter",
+}
+
 
 def quantity_title(name: str) -> str:
     """What people call a quantity."""
@@ -164,8 +172,7 @@ def _missing_words(samples: Samples, resolver: Resolver, system: System) -> str:
             stated = resolver.stated.get(name) or (resolver.stated.get("nitrogen") if name == "crude_protein" else None)
             goal = working if symbol.basis in (None, "any") else symbol.basis
             if stated not in (None, goal) and quantity_title(name) in lacking:
-                return (f"needs dry matter: {quantity_title(name)} is given per {stated.replace('_', ' ')}, "
-                        f"the figure is asked for per {str(goal).replace('_', ' ')}")  # fmt: skip
+                return f"needs dry matter: {quantity_title(name)} is given {ON[stated]}, but needed {ON[str(goal)]}"
     other = [words for needed, given, words in NOT_THE_SAME
              if quantity_title(needed) in lacking and given in resolver.columns and needed not in resolver.columns]  # fmt: skip
     return "; ".join([f"needs {', '.join(dict.fromkeys(lacking))}: not given, nor derivable on this basis", *other])

@@ -106,9 +106,11 @@ class Table:
             voided = voided & np.isnan(mean)
             if voided.any():
                 samples.voided[quantity] = voided
-            samples.u[quantity], samples.u_source[quantity] = uncertainty.of_means(
+            samples.u[quantity], samples.u_source[quantity], freedom = uncertainty.of_means(
                 values, dictionary()[quantity].default_u, found.u, found.u_censored
             )
+            if np.isfinite(freedom).any():
+                samples.freedom[quantity] = freedom
         self._check_ranges(samples)
         self._check_text(samples)
         self._check_preparation(samples)

@@ -9,15 +9,16 @@ import numpy as np
 
 from energy.catalogue import tables
 from energy.catalogue.records import System
-from energy.compare import BIASED, CONCORDANT, DISCORDANT, INCONCLUSIVE, NOT_COMPUTED, SINGLE_ROUTE, VERDICTS
+from energy.causes import Causes, find
+from energy.compare import BIASED, CONCORDANT, DISCORDANT, INCONCLUSIVE, NOT_COMPUTED, SCREENING, SINGLE_ROUTE, VERDICTS
 from energy.display import basis_factor, quantity_values, scale_of, visible
 from energy.evaluate import (
     MISSING,
 )
-from energy.explain import Facts, component_amounts, is_amount, parts_by_component, rank
+from energy.explain import component_amounts, is_amount, parts_by_component
 from energy.figures import figure_reasons
 from energy.quantities import DISPLAY_SCALE, dictionary
-from energy.samples import BASIS_CODE, Samples
+from energy.samples import Samples
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -26,10 +27,6 @@ if TYPE_CHECKING:
 
 #: the balances of a sample are said not to close below this p-value
 FAILS = 0.05
-#: who can use urea, and is fed it
-RUMINANTS = ("cattle", "dairy_cow", "sheep")
-#: crude protein of dry matter below which nobody adds urea to a feed (judgement of ours)
-UREA_FROM = 0.14
 STAGE_WORDS = {
     "GE": "gross energy", "DE": "digestible energy", "ME": "metabolizable energy", "NE": "net energy",
     "label": "label energy (not a metabolizable energy)", "digestibility": "digestibility", "UE": "energy in urine",
@@ -60,8 +57,8 @@ def pair_reasons(a: Assessment, p: int, rows: np.ndarray) -> np.ndarray:
     u = np.hypot(b.u_measurement[p], b.u_model[p])
     with np.errstate(all="ignore"):
         share = 100 * b.measurement[p] / b.at_heats[p]
-        interval = 100 * a.coverage * u / b.at_heats[p]
-        limit = 100 * a.width[p] / b.at_heats[p]
+        interval = 100 * a.coverage_factor[p] * u / b.at_heats[p]
+        limits = [100 * edge[p] / b.at_heats[p] for edge in a.edges]
     texts = np.full(len(rows), "", dtype=object)
     lacking: dict[str, np.ndarray] = {}
     for k, i in enumerate(rows):
@@ -74,53 +71,37 @@ def pair_reasons(a: Assessment, p: int, rows: np.ndarray) -> np.ndarray:
                     lacking[x] = figure_reasons(a, b.row(x))
             texts[k] = "; ".join(f"{x}: {lacking[x][i]}" for x in gone)
             continue
-        figures = f"measurement part {share[i]:+.1f} % +/- {interval[i]:.1f} %, limit +/- {limit[i]:.1f} %"
+        figures = f"measurement part {share[i]:+.1f} % +/- {interval[i]:.1f} %, limit {_limit_words(limits[0][i], limits[1][i])}"
         words = {
             CONCORDANT: "the interval lies inside the limits and holds zero",
             BIASED: "inside the limits, but zero is outside the interval",
             DISCORDANT: "the interval lies outside the limits altogether",
             INCONCLUSIVE: "the interval straddles a limit: the measurements do not decide"
             if np.isfinite(u[i]) else "no uncertainty is known",
+            SCREENING: "the composition is a near-infrared prediction, whose constituents share one spectrum: a screening, no verdict",
         }  # fmt: skip
         texts[k] = f"{words[code]} ({figures})"
     return texts
 
 
-def causes(a: Assessment) -> tuple[np.ndarray, np.ndarray]:
-    """Probable cause and next measurement per sample, from the GE comparison."""
-    b = a.blocks
-    code = a.verdict[0]
-    look = a.choice.limit.look_width(b.at_heats[0])
+#: a sample is looked at where its difference is this many u, or its balances fail at this p-value; 'no error' is surer
+#: than any cause below that
+WORTH_A_LOOK, PERHAPS_FAILS = 1.2, 0.2
+
+
+def _limit_words(low: float, high: float) -> str:
+    return f"+/- {high:.1f} %" if abs(low + high) < 0.005 * high else f"{low:.1f} to {high:+.1f} %"
+
+
+def causes(a: Assessment) -> Causes:
+    """What may explain each sample's difference in gross energy, for the samples that need it."""
+    b, code = a.blocks, a.verdict[0]
     with np.errstate(invalid="ignore"):
-        open_rows = (code == DISCORDANT) | (np.isin(code, (BIASED, INCONCLUSIVE)) & (np.abs(b.measurement[0]) > look))
-    if not open_rows.any():
-        empty = np.full(len(a.samples), "", dtype=object)
-        return empty, empty.copy()
-    n = len(a.samples)
-    no = np.zeros(n, dtype=bool)
-    s = a.samples
-    dry = quantity_values(s, "dry_matter")
-    fibre = np.nan_to_num(quantity_values(s, "total_dietary_fibre"))
-    given = ~np.isnan(s.columns["available_carbohydrate"]) if "available_carbohydrate" in s.columns else no
-    method = s.text.get("fat_method")
-    basis = s.basis.get("gross_energy")
-    facts = Facts(
-        measured=b.value[b.row(b.pairs[0].bomb)],
-        computed=b.value[b.row(b.pairs[0].composition)],
-        u=np.hypot(b.u_measurement[0], b.u_model[0]),
-        limit=a.width[0],
-        dry_matter=dry,
-        fibre=fibre,
-        mass_sum=mass_sum(s),
-        available_given=given,
-        ether_extract=no if method is None else np.array([m == "ether_extract" for m in method]),
-        on_dry_matter=no if basis is None else basis == BASIS_CODE["dry_matter"],
-        may_hold_urea=np.isnan(quantity_values(s, "urea"))
-        & (a.target in RUMINANTS)
-        & (quantity_values(s, "crude_protein") > UREA_FROM * quantity_values(s, "solids")),
-        ash_of_dry_matter=quantity_values(s, "ash") / quantity_values(s, "solids"),
-    )
-    return rank(facts, open_rows)
+        far = np.abs(b.measurement[0]) > WORTH_A_LOOK * np.hypot(b.u_measurement[0], b.u_model[0])
+        rows = np.flatnonzero((code == DISCORDANT) | far | (a.balance.p_value < PERHAPS_FAILS))
+    lower, upper = (edge[0] for edge in a.edges)
+    heats = a.catalogue[b.pairs[0].heats]
+    return find(a.samples, heats, a.target, rows, lower, upper, code == DISCORDANT)
 
 
 def mass_sum(samples: Samples) -> np.ndarray:

@@ -34,6 +34,7 @@ class Samples:
     ids : n texts, unique. columns : quantity -> (n,) float64, NaN where there is no value.
     u : quantity -> (n,) standard uncertainty in the column's unit, NaN where unknown.
     u_source : quantity -> (n,) int8 index into U_SOURCES.
+    freedom : quantity -> (n,) degrees of freedom of u; only columns in which they are few somewhere (inf elsewhere).
     basis : quantity -> (n,) int8 index into BASES (only quantities whose basis the table states).
     text : text or method column -> (n,) object array of str or None.
     voided : quantity -> (n,) bool, True where a cell was unusable (the value is NaN because of a problem).
@@ -47,6 +48,7 @@ class Samples:
     columns: dict[str, np.ndarray]
     u: dict[str, np.ndarray] = field(default_factory=dict)
     u_source: dict[str, np.ndarray] = field(default_factory=dict)
+    freedom: dict[str, np.ndarray] = field(default_factory=dict)
     basis: dict[str, np.ndarray] = field(default_factory=dict)
     text: dict[str, np.ndarray] = field(default_factory=dict)
     voided: dict[str, np.ndarray] = field(default_factory=dict)
@@ -108,6 +110,7 @@ class Samples:
             columns=some(self.columns),
             u=some(self.u),
             u_source=some(self.u_source),
+            freedom=some(self.freedom),
             basis=some(self.basis),
             text=some(self.text),
             voided=some(self.voided),
@@ -143,3 +146,11 @@ class Samples:
             if name in self.basis:
                 table[f"{name}_basis"] = np.array(BASES, dtype=object)[self.basis[name]]
         return pd.DataFrame(table)
+
+
+def by_near_infrared(samples: Samples) -> np.ndarray:
+    """(n,) bool: the composition was predicted from a near-infrared spectrum, so its constituents share one measurement."""
+    if "origin" not in samples.text:
+        return np.zeros(len(samples), dtype=bool)
+    words = ("nir", "nirs", "near infrared", "near-infrared", "near_infrared")
+    return np.array([str(o).strip().lower() in words for o in samples.text["origin"]], dtype=bool)

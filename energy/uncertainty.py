@@ -44,11 +44,13 @@ def of_means(
     default: tuple[float, float] | None,
     given: np.ndarray | None = None,
     censored: np.ndarray | None = None,
-) -> tuple[np.ndarray, np.ndarray]:
-    """(r, n) replicate values -> (n,) standard uncertainty of the means and its source, an index into U_SOURCES.
+) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+    """(r, n) replicate values -> (n,) standard uncertainty of the means, its source (index into U_SOURCES), its freedom.
 
     default : (absolute, relative) between laboratories. given : (n,) the user's u, NaN where none. censored : (n,) u of
     a value below a limit. NaN where nothing is known; the dictionary's default is filled in by Samples.fill_default_u.
+    Degrees of freedom are those of the pooled repeatability, by Welch and Satterthwaite beside a between-laboratory part
+    that is known (JCGM 100:2008, G.4.1); inf elsewhere.
     """
     mean, count = mean_of(values)
     u = np.full(len(mean), np.nan) if given is None else given.copy()
@@ -56,10 +58,14 @@ def of_means(
     if censored is not None:
         take = np.isnan(u) & ~np.isnan(censored)
         u[take], source[take] = censored[take], U_SOURCES.index("given")
+    degrees = np.full(len(mean), np.inf)
     sd, freedom = pooled_relative_sd(values)
     if freedom >= NEEDED_FREEDOM and default is not None:
         take = np.isnan(u) & (count >= 1)
         between = np.hypot(default[0], default[1] * np.abs(mean[take]))
-        u[take] = np.hypot(sd * np.abs(mean[take]) / np.sqrt(count[take]), between)
+        within = sd * np.abs(mean[take]) / np.sqrt(count[take])
+        u[take] = np.hypot(within, between)
         source[take] = U_SOURCES.index("replicates")
-    return u, source
+        with np.errstate(divide="ignore", invalid="ignore"):
+            degrees[take] = np.where(within > 0, freedom * (u[take] / within) ** 4, np.inf)
+    return u, source, degrees

@@ -6,12 +6,13 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from energy import figures, reasons
+from energy import causes, figures, reasons
 from energy.catalogue.records import SOURCE_STATUS, System
 from energy.compare import VERDICTS
 from energy.display import basis_factor, scale_of, visible
 from energy.evaluate import MISSING, STATUS
 from energy.gather import UNIT_SHOWN
+from energy.handling import determination
 from energy.problems import WrongUse
 from energy.quantities import DISPLAY_SCALE, dictionary
 from energy.samples import BASES, U_SOURCES
@@ -187,9 +188,9 @@ def _pair_table(a: Assessment, p: int, rows: np.ndarray, factor: np.ndarray | fl
             "heats_part": b.heats[p, rows] * k,
             "convention_part": convention * k - shift,
             "u_difference": b.u_difference[p, rows] * k,
-            "limit_lower": -a.width[p, rows] * k,
-            "limit_upper": a.width[p, rows] * k,
-            "coverage": a.coverage,
+            "limit_lower": a.edges[0][p, rows] * k,
+            "limit_upper": a.edges[1][p, rows] * k,
+            "coverage": a.coverage_factor[p, rows],
             "verdict": np.array(VERDICTS, dtype=object)[codes],
             "reason": talk,
             "probable_cause": cause[rows],
@@ -332,3 +333,38 @@ def equation_row(s: System) -> dict[str, Any]:
         "note": s.note,
         "file": s.file,
     }
+
+
+CAUSE_COLUMNS = (
+    "cause", "words", "share", "size", "measured", "computed", "difference_left", "closes", "next_measurement", "unit", "basis",
+)  # fmt: skip
+
+
+def probable_causes(a: Assessment, sample_id: str) -> pd.DataFrame:
+    """The causes that explain a sample's difference in gross energy, likeliest first, with 'no error' among them.
+
+    share : of probability, among what was tried. size : that closes, kg/kg or MJ/kg in the column's own basis, 1 where it is
+    known. measured, computed : gross energy corrected for it. Empty for a sample that needs no explanation.
+    """
+    import pandas as pd
+
+    c, row = a.tried, a.index(sample_id)
+    if row not in c.place:
+        return pd.DataFrame(columns=list(CAUSE_COLUMNS))
+    k = c.place[row]
+    scale = scale_of(a.catalogue[a.blocks.pairs[0].bomb], a.shown) * reasons.factor_of(a, row)
+    lines = []
+    for j in np.argsort(-c.weight[:, k], kind="stable"):
+        if c.weight[j, k] < 0.001:
+            break
+        lines.append({
+            "cause": causes.title(c, j), "words": causes.sentence(c, j, k), "share": c.weight[j, k], "size": c.size[j, k],
+            "measured": c.measured[j, k] * scale, "computed": c.computed[j, k] * scale,
+            "difference_left": (c.measured[j, k] - c.computed[j, k]) * scale, "closes": bool(c.closes[j, k]),
+            "next_measurement": determination(c.effects[j].repeats)["words"],
+        })  # fmt: skip
+    none = {"cause": "no error", "words": "scatter of the determinations alone", "share": c.none[k], "size": np.nan,
+            "measured": c.m.measured[k] * scale, "computed": c.m.computed[k] * scale,
+            "difference_left": c.m.energy[k] * scale, "closes": False, "next_measurement": ""}  # fmt: skip
+    frame = pd.DataFrame([*lines, none]).sort_values("share", ascending=False, kind="stable", ignore_index=True)
+    return frame.assign(unit=a.shown.unit, basis=a.shown.basis)[list(CAUSE_COLUMNS)]

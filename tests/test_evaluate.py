@@ -302,4 +302,4 @@ def test_a_row_without_its_dry_matter_in_a_batch_that_knows_it_is_told_what_to_a
     )
     assert found.loc[("a", "ge_heats_feed"), "status"] == "ok"
     reason = found.loc[("b", "ge_heats_feed"), "reason"]
-    assert reason.startswith("needs dry matter: protein is given per dry matter, the batch stands on as is")
+    assert reason.startswith("needs dry matter: protein is given per dry matter, but needed as is")

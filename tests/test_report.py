@@ -15,7 +15,7 @@ def demo():
 
 
 def test_every_verdict_has_its_own_mark():
-    assert len(set(MARKS.values())) == len(MARKS) == 6
+    assert len(set(MARKS.values())) == len(MARKS) == 7
 
 
 def test_board_has_one_row_per_sample(demo):

@@ -42,6 +42,7 @@ DERIVED_ONLY = ("carbohydrate_all", "solids")
 TAKEN_OUT = ("glycerol", "tagatose", "polydextrose", "unavailable_carbohydrate")
 NOT_SYSTEMS = (
     "derived", "targets", "component_heats", "food_matrix", "measured_vs_computed", "silage_dry_matter",
+    "handling_errors",
 )  # fmt: skip
 
 

@@ -41,6 +41,12 @@ def food_matrix() -> tuple[dict[str, Any], ...]:
 
 
 @cache
+def handling_errors() -> dict[str, list[dict[str, Any]]]:
+    """`error`: handling errors with words, commonness and usual size; `determination`: what settles which."""
+    return tomllib.loads((FOLDER / "handling_errors.toml").read_text(encoding="utf-8"))
+
+
+@cache
 def silage_corrections() -> dict[str, dict[str, Any]]:
     """Text of the column `form` -> constant and slope of the dry matter correction, with its citation."""
     raw = tomllib.loads((FOLDER / "silage_dry_matter.toml").read_text(encoding="utf-8"))

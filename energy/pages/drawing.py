@@ -18,6 +18,7 @@ COLOURS = {
     "biased": "#56B4E9",
     "inconclusive": "#CC79A7",
     "discordant": "#D55E00",
+    "screening": "#E69F00",
     "single_route": "#5d6a75",
     "not_computed": "#5d6a75",
 }

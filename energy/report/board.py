@@ -17,6 +17,7 @@ MARKS = {
     "biased": "◪",
     "inconclusive": "◇",
     "discordant": "✕",
+    "screening": "▤",
     "single_route": "╱",
     "not_computed": "·",
 }

@@ -117,7 +117,7 @@ def safe(table: pd.DataFrame) -> pd.DataFrame:
 
 
 #: what needs a look comes first
-ORDER = ("discordant", "inconclusive", "biased", "not_computed", "single_route", "concordant")
+ORDER = ("discordant", "inconclusive", "biased", "screening", "not_computed", "single_route", "concordant")
 
 
 def stages(a: Assessment) -> dict[str, str]:
