@@ -1,0 +1,1 @@
+"""From raw bomb runs to gross energy, and the health of the calorimeter that made them."""
