@@ -15,7 +15,7 @@ from energy.balance import Balances
 from energy.balance import balances as draw_up
 from energy.catalogue import reader, tables
 from energy.catalogue.records import TARGETS, System
-from energy.causes import Causes, texts, to_decide
+from energy.causes import NOTHING_CLOSES, REPEAT_BOTH, Causes, texts, to_decide
 from energy.choice import Choice, Wanted, choose, choose_shipped, house_limit
 from energy.compare import (
     BIASED,
@@ -239,6 +239,8 @@ class Assessment:
             undecided = np.flatnonzero((self.verdict[0] == INCONCLUSIVE) & (following == ""))
             m = matrices(self.samples, self.catalogue[self.blocks.pairs[0].heats], undecided)
             following[m.rows] = to_decide(m)
+            unknown = (self.verdict[0] == DISCORDANT) & (cause == "")
+            cause[unknown], following[unknown] = NOTHING_CLOSES, REPEAT_BOTH
         return cause, following
 
     def probable_causes(self, sample_id: str) -> pd.DataFrame:

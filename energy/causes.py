@@ -22,11 +22,14 @@ from energy.quantities import DISPLAY_SCALE, dictionary
 from energy.samples import Samples
 
 #: causes whose weight is at least this share of the likeliest one's are told beside it
-BESIDE = 0.05
-#: both balances count as closed below this chi-square (99 % point, two degrees of freedom)
-CLOSED = 9.21
+BESIDE = 0.02
+#: both balances count as closed below this chi-square (99.9 % point, two degrees of freedom)
+CLOSED = 13.82
 #: neighbours in gross energy among which a swapped partner is looked for
 NEIGHBOURS = 8
+#: what is said of a discordant sample that no error of the library closes
+NOTHING_CLOSES = "no single error known here closes the balances: more than one, or another"
+REPEAT_BOTH = "repeat the bomb and the moisture on one fresh subsample, and compare the certificates with the table"
 
 
 @dataclass
@@ -47,6 +50,7 @@ class Causes:
     closes: np.ndarray
     named: np.ndarray
     partner: np.ndarray
+    likelihood: np.ndarray
     place: dict[int, int] = field(default_factory=dict)
 
     @property
@@ -84,17 +88,19 @@ def find(
         swap, partner = _swapped(m, low, high)
         tried.append(swap)
         shape = (len(tried), len(m))
-        logs, size = np.full(shape, -np.inf), np.zeros(shape)
+        logs, plainly, size = np.full(shape, -np.inf), np.full(shape, -np.inf), np.zeros(shape)
         measured, computed, closes = np.empty(shape), np.empty(shape), np.zeros(shape, dtype=bool)
         for j, e in enumerate(tried):
-            logs[j], size[j], measured[j], computed[j], closes[j] = _weigh(m, e, low, high)
+            plainly[j], logs[j], size[j], measured[j], computed[j], closes[j] = _weigh(m, e, low, high)
         top = np.maximum(logs.max(axis=0, initial=-np.inf), plain)
         shares, none = np.exp(logs - top), np.exp(plain - top)
         total = shares.sum(axis=0) + none
         shares, none = shares / total, none / total
+        likely = np.exp(plainly - np.maximum(plainly.max(axis=0, initial=-np.inf), plain))
+        likely = likely / np.maximum(likely.sum(axis=0), 1e-300)
     some = shares.max(axis=0, initial=0.0) > 0
     named = some & (outside | (none < 0.5))
-    return Causes(m, tried, shares, none, size, measured, computed, closes, named, partner,
+    return Causes(m, tried, shares, none, size, measured, computed, closes, named, partner, likely,
                   {int(i): k for k, i in enumerate(m.rows)})  # fmt: skip
 
 
@@ -105,7 +111,7 @@ def _log_density(x: np.ndarray, y: np.ndarray, v11: np.ndarray, v12: np.ndarray,
 
 
 def _weigh(m: Matrices, e: Effect, low: np.ndarray, high: np.ndarray) -> tuple[np.ndarray, ...]:
-    """Log weight, size, corrected measured and computed gross energy, and whether the error closes the difference."""
+    """Log likelihood, log weight, size, corrected measured and computed gross energy, and whether the error closes the difference."""
     words = entry(e.id)
     v11, v12, v22 = m.v11, m.v12, m.v22
     if e.extra is not None:
@@ -116,8 +122,7 @@ def _weigh(m: Matrices, e: Effect, low: np.ndarray, high: np.ndarray) -> tuple[n
     size = e.size if e.exact else fitted
     left_mass, left = m.mass - e.mass * size, m.energy - e.energy * size
     quadratic = (v22 * left_mass**2 - 2 * v12 * left_mass * left + v11 * left**2) / determinant
-    inside = (left >= low) & (left <= high)
-    closes = (inside | (left**2 < CLOSED * v22)) & (~m.two | (quadratic < CLOSED))
+    closes = _closed(left, low, high, v22) & (~m.two | (quadratic < CLOSED))
     spread = e.spread**2
     log = _log_density(m.mass - e.mass * e.size, m.energy - e.energy * e.size, v11 + e.mass**2 * spread,
                        v12 + e.mass * e.energy * spread, v22 + e.energy**2 * spread)  # fmt: skip
@@ -128,10 +133,16 @@ def _weigh(m: Matrices, e: Effect, low: np.ndarray, high: np.ndarray) -> tuple[n
     believed = e.applies & closes & (size >= e.low) & (size <= e.high) & np.isfinite(log) & (common > 0)
     if e.column and not e.exact:
         believed &= _possible(m, e, size)
-    log = np.where(believed, log + np.log(common) + np.log(e.density), -np.inf)
+    plainly = np.where(believed, log + np.log(e.density), -np.inf)
+    log = np.where(believed, plainly + np.log(common), -np.inf)
     shift = e.energy * size
-    return (log, np.nan_to_num(size), m.measured - e.in_measured * shift,
-            m.computed + (1 - e.in_measured) * shift, believed & inside)  # fmt: skip
+    return (plainly, log, np.nan_to_num(size), m.measured - e.in_measured * shift,
+            m.computed + (1 - e.in_measured) * shift, believed & (left >= low) & (left <= high))  # fmt: skip
+
+
+def _closed(left: np.ndarray, low: np.ndarray, high: np.ndarray, variance: np.ndarray) -> np.ndarray:
+    """What is left lies inside the limits, or is no more than scatter."""
+    return np.asarray(((left >= low) & (left <= high)) | (left**2 < CLOSED * variance))
 
 
 def _possible(m: Matrices, e: Effect, size: np.ndarray) -> np.ndarray:
@@ -152,23 +163,26 @@ def _swapped(m: Matrices, low: np.ndarray, high: np.ndarray) -> tuple[Effect, np
     partner, best = np.full(k, -1), np.full(k, np.inf)
     sd = np.sqrt(m.v22)
     if k > 1:
-        order = np.argsort(m.measured, kind="stable")
-        rank = np.searchsorted(m.measured[order], m.computed)
+        # figures are swapped as they are written, each on the basis it was stated on
+        stated, own, basis = m.value("gross_energy"), m.own["gross_energy"], m.basis("gross_energy")
+        order = np.argsort(stated, kind="stable")
+        rank = np.searchsorted(stated[order], m.computed * own)
         batch = m.text("batch").astype(str)
         for offset in range(-NEIGHBOURS // 2, NEIGHBOURS // 2):
             place = rank + offset
             other = order[np.clip(place, 0, k - 1)]
-            mine, theirs = m.measured[other] - m.computed, m.measured - m.computed[other]
-            good = (place >= 0) & (place < k) & (other != np.arange(k)) & (batch[other] == batch)
-            good &= (mine >= low) & (mine <= high) & (theirs >= low[other]) & (theirs <= high[other])
+            mine, theirs = stated[other] / own - m.computed, stated / own[other] - m.computed[other]
+            good = (place >= 0) & (place < k) & (other != np.arange(k)) & (batch[other] == batch) & (basis[other] == basis)
+            good &= _closed(mine, low, high, m.v22) & _closed(theirs, low[other], high[other], m.v22[other])
             far = np.where(good, (mine / sd) ** 2 + (theirs / sd[other]) ** 2, np.inf)
             better = far < best
             best, partner = np.where(better, far, best), np.where(better, other, partner)
     found = partner >= 0
-    error = m.measured - np.where(found, m.measured[partner], m.measured)
-    zero = np.zeros(k)
-    # both samples are explained at once: what the partner's figures say for the swap counts here as well
-    theirs = np.where(found, m.measured - m.computed[partner], 0.0)
+    zero, error, theirs = np.zeros(k), np.zeros(k), np.zeros(k)
+    if found.any():
+        error = np.where(found, m.measured - stated[partner] / own, 0.0)
+        # both samples are explained at once: what the partner's figures say for the swap counts here as well
+        theirs = np.where(found, stated / own[partner] - m.computed[partner], 0.0)
     gain = np.where(found, np.exp(np.clip(0.5 * (m.energy[partner] ** 2 - theirs**2) / m.v22[partner], -50, 50)), 0.0)
     return Effect("swapped", found, zero, error, np.ones(k), zero, exact=True, in_measured=1.0,
                   commonness=entry("swapped")["commonness"] * gain / max(k - 1, 1), repeats="samples",
@@ -282,7 +296,7 @@ def words(c: Causes, k: int) -> str:
         return ""
     if all(c.effects[j].id == "measurement" for j in inside):
         return _by_size(c, inside, k)
-    others = [title(c, j) for j in inside[1:4]]
+    others = [title(c, j) for j in inside[1:5]]
     more = f" (not told apart: {'; '.join(dict.fromkeys(others))})" if others else ""
     return sentence(c, inside[0], k) + more
 
