@@ -9,8 +9,8 @@ import pytest
 ROOT = Path(__file__).parent.parent
 LAYERS = [
     ["energy", "energy.problems"],
-    ["energy.conformity", "energy.replicates", "energy.scores", "energy.robust", "energy.agreement"],
-    ["energy.interlaboratory"],
+    ["energy.conformity", "energy.replicates", "energy.scores", "energy.robust", "energy.propagation"],
+    ["energy.interlaboratory", "energy.agreement"],
     ["energy.units"],
     ["energy.bomb", "energy.bomb.constants", "energy.bomb.cautions", "energy.bomb.periods", "energy.bomb.preparation"],
     ["energy.bomb.rise", "energy.bomb.corrections", "energy.bomb.net_value", "energy.bomb.open_vessel"],
