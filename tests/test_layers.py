@@ -9,7 +9,14 @@ import pytest
 ROOT = Path(__file__).parent.parent
 LAYERS = [
     ["energy", "energy.problems"],
-    ["energy.conformity", "energy.replicates", "energy.scores", "energy.robust", "energy.propagation"],
+    [
+        "energy.conformity",
+        "energy.replicates",
+        "energy.scores",
+        "energy.robust",
+        "energy.propagation",
+        "energy.equivalence",
+    ],
     ["energy.interlaboratory", "energy.agreement"],
     ["energy.units"],
     ["energy.bomb", "energy.bomb.constants", "energy.bomb.cautions", "energy.bomb.periods", "energy.bomb.preparation"],
