@@ -30,6 +30,7 @@ from energy.compare import (
 )
 from energy.evaluate import MISSING, Blocks, evaluate
 from energy.matrices import matrices
+from energy.monte_carlo import Checked, monte_carlo
 from energy.problems import Problem, WrongUse
 from energy.samples import Samples, by_near_infrared
 from energy.targets import target_slug, targets_like
@@ -315,6 +316,19 @@ class Assessment:
     def budget(self, sample_id: str, system: str) -> pd.DataFrame:
         """Which input carries how much of the uncertainty of one figure."""
         return sensitivity.budget(self, sample_id, system)
+
+    def monte_carlo(
+        self, sample_id: str, system: str, less: str | None = None, seed: int = 1, trials: int | None = None
+    ) -> Checked:
+        """One figure of a sample, or with `less` the difference of two, by Monte Carlo (JCGM 101) beside first order.
+
+        MJ/kg on the working basis; `trust` says which of the two to believe. Raises WrongUse where a figure is not there.
+        """
+        for name in (system, less):
+            if name is not None and name not in self.catalogue:
+                raise WrongUse(f"There is no system '{name}'.", "See the column 'system' of results.")
+        other = None if less is None else self.catalogue[less]
+        return monte_carlo(self.samples, self.index(sample_id), self.catalogue[system], other, seed=seed, trials=trials)
 
     def covariance(self, sample_id: str) -> pd.DataFrame:
         """Covariance of every two figures of a sample by the inputs they share, (MJ/kg)^2 on the working basis."""

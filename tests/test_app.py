@@ -181,7 +181,7 @@ def test_a_sample_shows_questions_partition_and_parts(app):
         assert table.value["step"].tolist() == ["gross energy", "not used by the eater", "metabolizable energy"]
     # demo sample 002 by hand: 9.6 x 17 + 2.4 x 37 + 39.6 x 17 + 7.1 x 8 = 982.0 kJ per 100 g
     assert app.table[1].value["kJ/100 g"].iloc[2] == "982\\.0"
-    assert len(app.get("vega_lite_chart")) == 1
+    assert len(app.get("vega_lite_chart")) == 2  # the partition with its intervals, and the three parts
 
 
 def test_in_kilocalories_a_sample_shows_the_laws_own_sum(app):
@@ -216,12 +216,26 @@ def test_a_sample_names_the_sources_of_its_figures_in_words(app):
     assert "EU label energy" in text
 
 
+def test_a_sample_shows_what_would_explain_its_difference(app):
+    app.session_state["sample"] = "F03"
+    app.switch_page("energy/pages/sample.py").run()
+    assert not app.exception
+    assert any("what would settle it" in t.value.columns for t in app.table)
+
+
+def test_a_figure_can_be_checked_by_monte_carlo(app):
+    app.session_state["sample"] = "002"
+    app.switch_page("energy/pages/sample.py").run()
+    next(b for b in app.button if b.label == "Check by Monte Carlo").click().run()
+    assert "by Monte Carlo" in everything(app).replace("\\", "")
+
+
 def test_a_sample_with_one_route_says_so(app):
     app.session_state["sample"] = "N01"
     app.switch_page("energy/pages/sample.py").run()
     assert not app.exception
     assert "One route only" in everything(app)
-    assert not app.get("vega_lite_chart")
+    assert len(app.get("vega_lite_chart")) == 1  # the partition alone: there are no parts
 
 
 def test_equations_are_typeset_with_their_source(app):

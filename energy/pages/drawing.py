@@ -75,5 +75,36 @@ def parts_chart(parts: pd.DataFrame, unit: str) -> alt.LayerChart:
         )
     )
     zero = alt.Chart(parts).mark_rule(color=INK).encode(x=alt.datum(0))
-    chart = alt.LayerChart(layer=[bars, zero])
+    y = alt.Y("label:N", sort=order, title=None, axis=axis)
+    whisker = alt.Chart(parts[:1]).mark_rule(color=INK, strokeWidth=2).encode(x="low:Q", x2="high:Q", y=y)
+    limits = [alt.Chart(parts[:1]).mark_tick(color=INK, thickness=2, size=30, strokeDash=[3, 2]).encode(x=f"{end}:Q", y=y)
+              for end in ("limit_lower", "limit_upper")]  # fmt: skip
+    chart = alt.LayerChart(layer=[bars, zero, whisker, *limits])
     return chart.properties(height=alt.Step(34))
+
+
+ROUTE_MARKS = {"bomb": ("#0072B2", "diamond"), "composition": ("#D55E00", "circle")}
+
+
+def partition_chart(points: pd.DataFrame, unit: str) -> alt.LayerChart:
+    """Both routes' steps under each other, each figure with its interval; mark and colour tell the route."""
+    import altair as alt
+
+    routes = [r for r in ROUTE_MARKS if r in set(points["route"])]
+    order = list(dict.fromkeys(points["step"]))
+    y = alt.Y("step:N", sort=order, title=None,
+              axis=alt.Axis(labelFontSize=13, labelLimit=0, labelColor=INK, ticks=False, domain=False, labelPadding=10))  # fmt: skip
+    shift = alt.YOffset("route:N", sort=routes)
+    colour = alt.Color("route:N", scale=alt.Scale(domain=routes, range=[ROUTE_MARKS[r][0] for r in routes]),
+                       legend=alt.Legend(title=None, orient="top"))  # fmt: skip
+    x = alt.X("value:Q", title=unit, scale=alt.Scale(zero=False), axis=alt.Axis(tickCount=6))
+    base = alt.Chart(points)
+    line = base.mark_rule(strokeWidth=2).encode(
+        x=alt.X("low:Q", title=unit), x2="high:Q", y=y, yOffset=shift, color=colour
+    )
+    mark = base.mark_point(size=90, filled=True, opacity=1).encode(
+        x=x, y=y, yOffset=shift, color=colour,
+        shape=alt.Shape("route:N", scale=alt.Scale(domain=routes, range=[ROUTE_MARKS[r][1] for r in routes])),
+        tooltip=["step:N", "route:N", "figure:N"],
+    )  # fmt: skip
+    return alt.LayerChart(layer=[line, mark]).properties(height=alt.Step(26))

@@ -41,6 +41,10 @@ def partitions(assessment: Assessment, sample: str) -> None:
     ):
         place.markdown(f"**{title}**")
         place.table(screen.safe(screen.partition_table(assessment, sample, route)), hide_index=True)
+    points = screen.partition_points(assessment, sample)
+    if len(points):
+        st.altair_chart(drawing.partition_chart(points, assessment.shown.unit), width="stretch")
+        st.caption(f"Lines are intervals of {assessment.coverage:g} standard uncertainties.")
     with st.expander("Sources of these figures"):
         st.table(screen.safe(screen.partition_sources(assessment, sample)), hide_index=True)
 
@@ -54,10 +58,38 @@ def three_parts(assessment: Assessment, sample: str) -> None:
         return
     st.altair_chart(drawing.parts_chart(parts, assessment.shown.unit), width="stretch")
     st.caption(
-        "Measurement: bomb and laboratory disagree about the material. Heats: general heats of combustion do not fit it. "
+        "The line across the measurement bar is its interval, the ticks beside it are the practical limits. Measurement: bomb and laboratory disagree about the material. Heats: general heats of combustion do not fit it. "
         "Convention: the two systems value the same grams differently; nobody is at fault."
     )
     st.table(screen.safe(screen.parts_table(assessment, sample)), hide_index=True)
+
+
+def causes(assessment: Assessment, sample: str) -> None:
+    """What would explain the difference in gross energy, and what would settle it."""
+    table = screen.causes_table(assessment, sample)
+    if not len(table):
+        return
+    st.subheader("What would explain the difference", anchor=False)
+    st.table(screen.safe(table), hide_index=True)
+    st.caption(
+        "Each error known here is tried alone, at the size that closes. The weight says how well it fits, how common it is and "
+        "how usual its size, against all others and against no error at all; how common an error is is our own judgement. "
+        "Food matrix, heat damage and resistant starch are no causes: where they matter, both routes overstate what is used."
+    )
+
+
+def uncertainty(assessment: Assessment, sample: str) -> None:
+    """What carries the uncertainty of a figure, and whether first order may be trusted."""
+    systems = screen.computed_systems(assessment, sample)
+    if not systems:
+        return
+    st.subheader("What carries the uncertainty", anchor=False)
+    system = st.selectbox("Figure", list(systems), format_func=lambda i: systems[i], key="budget_system")
+    table = screen.budget_table(assessment, sample, system)
+    if len(table):
+        st.table(screen.safe(table), hide_index=True)
+    if st.button("Check by Monte Carlo", help="JCGM 101: draws of the measured inputs, 100,000 or more, fixed seed"):
+        st.markdown(screen.plain(screen.checked_sentence(assessment, sample, system)))
 
 
 session.opening(
@@ -74,6 +106,8 @@ if assessment is not None:
         st.markdown("\n".join(f"- {screen.plain(screen.answer(note))}" for note in notes))
     partitions(assessment, sample)
     three_parts(assessment, sample)
+    causes(assessment, sample)
+    uncertainty(assessment, sample)
     st.subheader("What was given", anchor=False)
     st.dataframe(screen.given_table(assessment, sample), hide_index=True, width="stretch")
     st.subheader("Every figure, with its source", anchor=False)

@@ -24,6 +24,8 @@ if TYPE_CHECKING:
 
     from energy.assessment import Assessment
 
+#: a cause is listed on the screen from this weight
+CAUSE_SHOWN = 0.01
 #: a difference falls into these, in this order
 PARTS = ("measurement", "heats", "convention")
 UNITS = ("kJ/100 g", "kcal/100 g", "MJ/kg", "kcal/kg", "kJ/100 g DM", "kcal/100 g DM", "MJ/kg DM")
@@ -303,6 +305,76 @@ def partition_table(a: Assessment, sample_id: str, route: str) -> pd.DataFrame:
     )  # fmt: skip
 
 
+def partition_points(a: Assessment, sample_id: str) -> pd.DataFrame:
+    """Both routes' steps for drawing: step, route, value and the ends of its interval; losses have no point of their own."""
+    found = a.partition(sample_id)
+    found = found[(found["stage"] != "loss") & np.isfinite(found["value"].astype(float))]
+    u = found["u"].astype(float).fillna(0.0)
+    value = found["value"].astype(float)
+    table = found[["step", "route"]].assign(value=value, low=value - a.coverage * u, high=value + a.coverage * u)
+    table["figure"] = [
+        f"{_figure(v, _digits(a))} ± {_figure(a.coverage * x, _digits(a))}" for v, x in zip(value, u, strict=True)
+    ]
+    return table.reset_index(drop=True)
+
+
+def causes_table(a: Assessment, sample_id: str) -> pd.DataFrame:
+    """What would explain a sample's difference, likeliest first; empty where nothing needs explaining."""
+    import pandas as pd
+
+    found = a.probable_causes(sample_id)
+    found = found[found["share"] >= CAUSE_SHOWN]
+    if not len(found) or found["cause"].tolist() == ["no error"]:
+        return pd.DataFrame()
+    digits = _digits(a)
+    return pd.DataFrame(
+        {
+            "what would explain it": [_sentence(w) for w in found["words"]],
+            "weight": [f"{100 * x:.0f} %" for x in found["share"]],
+            f"bomb corrected, {a.shown.unit}": [_figure(v, digits) for v in found["measured"]],
+            f"composition corrected, {a.shown.unit}": [_figure(v, digits) for v in found["computed"]],
+            "then": ["closes" if x else f"leaves {_figure(left, digits, True)}"
+                     for x, left in zip(found["closes"], found["difference_left"], strict=True)],
+            "what would settle it": [_sentence(w) if w else "" for w in found["next_measurement"]],
+        }
+    )  # fmt: skip
+
+
+def computed_systems(a: Assessment, sample_id: str) -> dict[str, str]:
+    """id -> stage and title of the figures a sample has, the leading ones first."""
+    found = a.select(sample_id=sample_id)
+    found = found[np.isfinite(found["value"].astype(float))].sort_values("leading", ascending=False, kind="stable")
+    return {str(i): f"{STAGE_WORDS.get(stage, stage)}: {in_words(str(i))}"
+            for i, stage in zip(found["system"], found["stage"], strict=True)}  # fmt: skip
+
+
+def budget_table(a: Assessment, sample_id: str, system: str) -> pd.DataFrame:
+    """Which determination carries how much of the uncertainty of one figure, the largest first."""
+    import pandas as pd
+
+    found = a.budget(sample_id, system)
+    return pd.DataFrame(
+        {
+            "determination": found["input"].astype(str),
+            "value": [f"{v:.4g} {unit}" for v, unit in zip(found["value"], found["unit"], strict=True)],
+            "u": [f"{u:.2g}" for u in found["u"]],
+            "u is from": [U_WORDS.get(w, w) for w in found["u_from"]],
+            "brings, MJ/kg": [f"{abs(c):.3f}" for c in found["contribution"]],
+            "of the variance": [f"{100 * x:.0f} %" for x in found["share"]],
+        }
+    )
+
+
+def checked_sentence(a: Assessment, sample_id: str, system: str) -> str:
+    """One figure by Monte Carlo beside first order, in words."""
+    from energy.problems import WrongUse
+
+    try:
+        return in_words(a.monte_carlo(sample_id, system).sentence)
+    except WrongUse as reason:
+        return str(reason)
+
+
 def partition_sources(a: Assessment, sample_id: str) -> pd.DataFrame:
     """The systems behind both energy partitions, once each, with source and place."""
     found = a.partition(sample_id).drop_duplicates("system")
@@ -380,7 +452,13 @@ def parts(a: Assessment, sample_id: str) -> pd.DataFrame | None:
     if not np.isfinite(values).all():
         return None
     labels = [f"{part}  {_figure(v, _digits(a), True)}" for part, v in zip(PARTS, values, strict=True)]
-    return pd.DataFrame({"part": list(PARTS), "value": values, "label": labels})
+    room = float(row["coverage"] * row["u_measurement_part"])
+    # the verdict is about the measurement part: its interval and the practical limits belong to that bar alone
+    return pd.DataFrame(
+        {"part": list(PARTS), "value": values, "label": labels, "low": [values[0] - room, np.nan, np.nan],
+         "high": [values[0] + room, np.nan, np.nan], "limit_lower": [float(row["limit_lower"]), np.nan, np.nan],
+         "limit_upper": [float(row["limit_upper"]), np.nan, np.nan]}
+    )  # fmt: skip
 
 
 def parts_sentence(a: Assessment, sample_id: str) -> str:
