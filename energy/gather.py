@@ -7,11 +7,11 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from energy import cells, silage, uncertainty
+from energy import cells, duplicates, silage, uncertainty
 from energy.catalogue.records import TARGETS
 from energy.catalogue.tables import food_groups
 from energy.problems import Problem, StructuralProblems
-from energy.quantities import DISPLAY_SCALE, dictionary, method_columns, normal_form
+from energy.quantities import DISPLAY_SCALE, Quantity, dictionary, method_columns, normal_form
 from energy.samples import BASIS_CODE, Samples
 from energy.tabular import RawTable
 from energy.targets import target_slug, targets_like
@@ -96,6 +96,8 @@ class Table:
         for quantity, found in self.gathered.items():
             values = np.array(list(found.values.values())) if found.values else np.full((1, n), np.nan)
             mean, count = uncertainty.mean_of(values)
+            if len(values) > 1:
+                mean = self._judge_replicates(samples, quantity, values, found.censored)
             samples.columns[quantity] = mean
             samples.replicates[quantity] = count
             if found.basis is not None and dictionary()[quantity].basis == "stated":
@@ -120,12 +122,24 @@ class Table:
         samples.fill_default_u()
         return samples
 
+    def _judge_replicates(
+        self, samples: Samples, quantity: str, values: np.ndarray, censored: np.ndarray | None
+    ) -> np.ndarray:
+        """(n,) what the replicates give; all of them stay on record in memo["runs"]."""
+        entry = dictionary()[quantity]
+        judged = duplicates.judge(entry, values, censored, _unit_shown(entry))
+        for i, what, cure in judged.findings:
+            self.tell(what, cure, i, quantity, None, "warning")
+        samples.memo.setdefault("runs", {})[quantity] = values
+        samples.memo.setdefault("accepted", {})[quantity] = judged.accepted
+        return judged.accepted.value
+
     def _check_ranges(self, samples: Samples) -> None:
         for quantity, values in samples.columns.items():
             entry = dictionary()[quantity]
             low, high = entry.range
             scale = 1 / DISPLAY_SCALE[entry.dimension]
-            unit = UNIT_SHOWN.get(entry.dimension, "" if entry.dimension == "number" else "%")
+            unit = _unit_shown(entry)
             with np.errstate(invalid="ignore"):
                 impossible = ((values < 0) & (low >= 0)) | (
                     (values > 1.0000001) if scale == 100 and high <= 1 else np.zeros(len(values), dtype=bool)
@@ -223,6 +237,10 @@ class Table:
                 f"the unit '{unit.text}' is per volume and no density is given.", "Add density [g/ml].", i, column
             )
         return values * unit.scale / density, lacking
+
+
+def _unit_shown(entry: Quantity) -> str:
+    return UNIT_SHOWN.get(entry.dimension, "" if entry.dimension == "number" else "%")
 
 
 def _method(word: str | None) -> str | None:
