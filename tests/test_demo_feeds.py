@@ -41,12 +41,12 @@ def test_every_table_says_it_is_invented():
         ("dog", "D05", "without acid hydrolysis"),
         ("dog", "D06", "fits dry matter, not the material as it is"),
         ("growing_pig", "P05", "ten times too small"),
-        ("duck", "U03", "an error of dry matter"),
+        ("duck", "U03", "dry matter 6.0 g per 100 g too high"),
         ("cattle", "B03", "non-protein nitrogen counted as protein"),
     ],
 )
 def test_a_planted_fault_is_named(demo, target, sample, words):
-    assert words in verdict(demo[target], sample)["probable_cause"]
+    assert words in verdict(demo[target], sample)["probable_cause"].split(" (not told apart")[0]
 
 
 @pytest.mark.parametrize(

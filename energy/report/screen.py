@@ -13,6 +13,7 @@ import numpy as np
 from energy.catalogue import reader, tables
 from energy.catalogue.records import SOURCE_STATUS, TARGETS
 from energy.choice import LED
+from energy.figures import ON
 from energy.headers import Meaning
 from energy.quantities import dictionary
 from energy.reasons import STAGE_WORDS
@@ -370,7 +371,8 @@ def checked_sentence(a: Assessment, sample_id: str, system: str) -> str:
     from energy.problems import WrongUse
 
     try:
-        return in_words(a.monte_carlo(sample_id, system).sentence)
+        found = a.monte_carlo(sample_id, system)
+        return f"In MJ/kg {ON[a.blocks.basis]} (a ratio is a number): {in_words(found.sentence)}"
     except WrongUse as reason:
         return str(reason)
 
