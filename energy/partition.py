@@ -1,7 +1,9 @@
 """The energy partition of one sample: gross energy, each loss, and what is left, by both routes.
 
 Feeds: GE -> DE -> ME -> NE, each figure by the first system of its route that serves the sample; between two figures
-stands what is lost, taken apart into urine and methane where the system does so. Foods: GE -> ME or label energy.
+stands what is lost, taken apart into urine and methane where the system does so. A loss is taken within one chain: where
+a figure was reached from another energy than the one that stands above it, its own is taken, and said. Net energies for
+maintenance and gain are two uses of one metabolizable energy: both stand under it. Foods: GE -> ME or label energy.
 """
 
 from __future__ import annotations
@@ -32,6 +34,12 @@ LOST = {
     ("DE", "NE"): "energy in urine, gas and heat increment",
     ("ME", "NE"): "heat increment",
 }
+#: net energies by their use; of others, `STAGE_WORDS` speaks
+KIND_WORDS = {
+    "NEm": "net energy for maintenance",
+    "NEg": "net energy for gain",
+    "NEL": "net energy for lactation",
+}
 PARTS_OF_LOSS = (("UE", "urinary_energy", "energy in urine"), ("CH4E", "methane_energy", "energy in methane"))
 
 
@@ -53,13 +61,17 @@ def _of_feeds(a: Assessment, sample_id: str) -> pd.DataFrame:
             blocks = evaluate(a.samples, [first])
             figure = {"value": float(blocks.value[0, row]), "u": float(blocks.u[0, row])}
             lines.append(_line(a, route, STAGE_WORDS["GE"], first.id, row, figure, first))
-        above, stage = lines[-1], "GE"
+        above, stage, standing = lines[-1], "GE", {"GE": lines[-1]["value"]}
         for system, value, u in _figures(a, route, row):
             figure = {"value": value, "u": u}
-            line = _line(a, route, STAGE_WORDS[system.stage], system.id, row, figure, system)
-            lines += _losses(a, row, above, line, (stage, system.stage), system)
+            words = KIND_WORDS.get(system.kind, STAGE_WORDS[system.stage])
+            line = _line(a, route, words, system.id, row, figure, system)
+            if system.stage == stage:  # another use of the energy above, with no loss between the two
+                lines.append(line)
+                continue
+            lines += _losses(a, row, above, line, (stage, system.stage), system, standing)
             lines.append(line)
-            above, stage = line, system.stage
+            above, stage, standing[system.stage] = line, system.stage, value
     frame = pd.DataFrame(lines)
     frame[["value", "u"]] *= factor_of(a, row) / a.shown.scale
     return frame
@@ -75,27 +87,51 @@ def _own_gross_energy(a: Assessment, row: int) -> System | None:
 
 
 def _figures(a: Assessment, route: str, row: int) -> list[tuple[System, float, float]]:
-    """One figure per stage below GE: the first system of the route that serves; else a stage its chain passes."""
+    """One figure per stage below GE and use of net energy: the first system that serves; else a stage its chain passes."""
     found: dict[str, tuple[System, float, float]] = {}
+    uses: dict[str, tuple[System, float, float]] = {}
     ready = [s for i, s in enumerate(a.choice.systems)
              if s.route == route and s.stage in STAGES and a.blocks.status[i, row] < MISSING]  # fmt: skip
     for s in ready:
         i = a.blocks.row(s.id)
-        found.setdefault(s.stage, (s, float(a.blocks.value[i, row]), float(a.blocks.u[i, row])))
+        figure = (s, float(a.blocks.value[i, row]), float(a.blocks.u[i, row]))
+        (uses if s.stage == "NE" else found).setdefault(s.kind if s.stage == "NE" else s.stage, figure)
     for s in ready:
         for count in range(1, len(s.steps)):
             stage = a.catalogue[s.steps[count - 1]].stage
-            if stage in STAGES and stage not in found:
+            if stage in STAGES and stage != "NE" and stage not in found:
                 part = up_to(s, count, a.catalogue)
                 blocks = evaluate(a.samples, [part])
                 found[stage] = (part, float(blocks.value[0, row]), float(blocks.u[0, row]))
-    return [found[stage] for stage in STAGES if stage in found]
+    return [*(found[stage] for stage in STAGES if stage in found), *uses.values()]
+
+
+def _passed(a: Assessment, row: int, system: System) -> dict[str, float]:
+    """Stage -> the energy a chain passes there on its way."""
+    passed = {}
+    for count in range(1, len(system.steps)):
+        part = up_to(system, count, a.catalogue)
+        if part.stage in STAGES:
+            passed[part.stage] = float(evaluate(a.samples, [part]).value[0, row])
+    return passed
 
 
 def _losses(
-    a: Assessment, row: int, above: dict[str, Any], below: dict[str, Any], stages: tuple[str, str], system: System
-) -> list[dict[str, Any]]:
-    """What lies between two figures: urine and methane apart where the lower figure takes them off apart."""
+    a: Assessment, row: int, above: dict[str, Any], below: dict[str, Any], stages: tuple[str, str], system: System,
+    standing: dict[str, float],
+) -> list[dict[str, Any]]:  # fmt: skip
+    """What lies between two figures: urine and methane apart where the lower figure takes them off apart.
+
+    standing : the figures drawn so far by stage; a chain that passes another energy there is measured by its own.
+    """
+    passed = _passed(a, row, system)
+    last = next((stage for stage in reversed(passed) if stage in standing), None)
+    if last is not None and not np.isclose(passed[last], standing[last], rtol=1e-9):
+        own = last == stages[0]
+        value = passed[last] - below["value"] if own else np.nan
+        line = _line(a, above["route"], LOST[stages], system.id, row, {"value": value, "u": np.nan}, system)
+        words = f"{STAGE_WORDS[last]} by this chain is not the one that stands above, by {above['system']}"
+        return [{**line, "stage": "loss", "words": f"{words}: taken off its own" if own else f"{words}: not drawn"}]
     whole = above["value"] - below["value"]
     apart = []
     if stages == ("DE", "ME"):

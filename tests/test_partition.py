@@ -4,6 +4,7 @@ import pandas as pd
 import pytest
 
 import energy
+from energy.assessment import demo_paths
 
 FEED = {"sample_id": "s", "dry matter [%]": 88.0, "crude protein [g/kg DM]": 150.0, "crude fat [g/kg DM]": 30.0,
         "crude fibre [g/kg DM]": 200.0, "ash [g/kg DM]": 70.0, "NDF [g/kg DM]": 400.0, "ADF [g/kg DM]": 250.0,
@@ -30,9 +31,9 @@ CASES = {
 @pytest.mark.parametrize("route", ["bomb", "composition"])
 @pytest.mark.parametrize("target", CASES)
 def test_figures_and_losses_close(target, route):
-    """The first figure less all losses is the last figure."""
+    """The first figure less all losses is the last figure; gain is another use of the energy of maintenance."""
     found = partition(target, **CASES[target])
-    found = found[found["route"] == route]
+    found = found[(found["route"] == route) & (found["step"] != "net energy for gain")]
     losses = found["stage"] == "loss"
     assert found["value"].iloc[0] - found.loc[losses, "value"].sum() == pytest.approx(
         found.loc[~losses, "value"].iloc[-1]
@@ -77,3 +78,39 @@ def test_every_line_has_its_source():
     found = partition("growing_pig")
     assert (found["source"].str.len() > 0).all()
     assert (found["locator"].str.len() > 0).all()
+
+
+BALANCE = {"energy digestibility [%]": 63.0, "urinary energy [MJ/kg DM]": 0.75, "methane energy [MJ/kg DM]": 1.13}
+
+
+def test_heat_increment_of_a_balance_is_taken_within_the_chain_of_net_energy():
+    """ME = 1.0001 x 11.466 - 0.3926 x 4.184 = 9.8245 MJ, 2.34811 Mcal; NEm = 1.47197 Mcal, 6.15874 MJ; by hand."""
+    found = partition("cattle", **BALANCE)
+    me = (1.0001 * 18.2 * 0.63 - 0.3926 * 4.184) / 4.184
+    nem = 1.37 * me - 0.138 * me**2 + 0.0105 * me**3 - 1.12
+    heat = found[found["step"] == "heat increment"].iloc[0]
+    assert heat["value"] == pytest.approx(4.184 * (me - nem))
+    assert "not the one that stands above" in heat["words"]
+
+
+def test_the_metabolizable_energy_shown_stays_that_of_the_balance():
+    """18.2 x 0.63 - 0.75 - 1.13."""
+    found = dict(lines(partition("cattle", **BALANCE), "bomb"))
+    assert found["metabolizable energy"] == pytest.approx(18.2 * 0.63 - 0.75 - 1.13)
+
+
+def test_net_energy_for_gain_stands_beside_that_for_maintenance():
+    """Garrett's cubic at the ME of the chain, by hand."""
+    found = dict(lines(partition("cattle", **CASES["cattle"]), "bomb"))
+    me = (1.0001 * 18.2 * 0.68 - 0.3926 * 4.184) / 4.184
+    assert found["net energy for gain"] == pytest.approx(4.184 * (1.42 * me - 0.174 * me**2 + 0.0122 * me**3 - 1.65))
+    assert "net energy for maintenance" in found
+
+
+@pytest.mark.parametrize(("sample", "expected"), [("B04", 3.662), ("B05", 3.506)])
+def test_heat_increment_of_the_invented_balances(sample, expected):
+    """By hand from Mcal: 4.336 x 0.63 gives ME 2.33935 and NEm 1.46412; 4.258 x 0.48 gives 1.65144 and 0.81341."""
+    path = next(p for p in demo_paths() if p.stem == "feeds_cattle")
+    found = energy.assess(path, unit="MJ/kg DM").partition(sample)
+    heat = found[(found["route"] == "bomb") & (found["step"] == "heat increment")]
+    assert heat["value"].item() == pytest.approx(expected, abs=0.0005)
