@@ -17,6 +17,8 @@ _HOMES = {
     "Assessment": "energy.assessment",
     "equations": "energy.assessment",
     "feed_tolerance": "energy.feedlaw",
+    "reduce_runs": "energy.bomb.reduction",
+    "calibrate": "energy.bomb.reduction",
     "Problem": "energy.problems",
     "EnergyError": "energy.problems",
     "StructuralProblems": "energy.problems",

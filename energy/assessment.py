@@ -385,10 +385,10 @@ def equations(
 
 
 def demo_paths() -> list[Path]:
-    """The invented demo tables, from an installed wheel or a checkout."""
+    """The invented demo samples, from an installed wheel or a checkout."""
     here = Path(__file__).parent
     for folder in (here / "demo_data", here.parent / "demo_data"):
-        found = sorted(folder.glob("*.csv"), reverse=True)
+        found = sorted((p for p in folder.glob("*.csv") if p.stem.startswith(("foods", "feeds"))), reverse=True)
         if found:
             return found
     raise WrongUse("The demo tables are not there.", "Install the package again.")

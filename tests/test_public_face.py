@@ -8,7 +8,7 @@ import energy
 NAMES = {
     "Assessment", "CatalogueProblem", "EnergyError", "FormulaProblem", "Problem", "Samples", "StructuralProblems",
     "UnitProblem", "WrongUse", "__version__", "assess", "assess_each", "equations", "feed_tolerance",
-    "read_samples",
+    "read_samples", "reduce_runs", "calibrate",
 }  # fmt: skip
 
 

@@ -14,7 +14,7 @@ from numpy.typing import ArrayLike
 
 from energy.bomb.constants import CALORIE, constants, ignition_materials, in_joule
 from energy.bomb.constants import value as constant
-from energy.bomb.periods import Flags, Floats
+from energy.bomb.drift import Flags, Floats
 from energy.problems import WrongUse
 
 #: why sulfur is left out unless asked for

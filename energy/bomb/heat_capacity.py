@@ -15,7 +15,7 @@ from scipy.special import stdtr
 from energy.bomb.constants import constants
 from energy.bomb.constants import value as constant
 from energy.bomb.corrections import Term
-from energy.bomb.periods import Flags, Floats
+from energy.bomb.drift import Flags, Floats
 from energy.replicates import GRUBBS_NEEDS, grubbs
 
 BASES = ("air", "vacuum")

@@ -12,7 +12,7 @@ from numpy.typing import ArrayLike
 
 from energy.bomb.constants import in_joule
 from energy.bomb.constants import value as constant
-from energy.bomb.periods import Floats
+from energy.bomb.drift import Floats
 from energy.problems import WrongUse
 
 NET_METHODS = {

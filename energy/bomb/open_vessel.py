@@ -13,7 +13,7 @@ from numpy.typing import ArrayLike
 
 from energy.bomb.constants import constants
 from energy.bomb.constants import value as constant
-from energy.bomb.periods import Floats
+from energy.bomb.drift import Floats
 
 CONSTANT_PRESSURE = (
     "an open vessel gives heat at constant pressure (an enthalpy), a bomb heat at constant volume (an internal energy):"

@@ -14,8 +14,8 @@ from energy.bomb.cautions import rating_sentence
 from energy.bomb.constants import constants
 from energy.bomb.constants import value as constant
 from energy.bomb.corrections import SOOT_REASON, Budget, aid_share
+from energy.bomb.drift import Flags, Floats
 from energy.bomb.heat_capacity import Calibration
-from energy.bomb.periods import Flags, Floats
 from energy.bomb.preparation import day_warning
 from energy.bomb.rise import Rise
 from energy.bomb.runs import KINDS, OUTCOME_COLUMNS, RUN_STATUS, RunSheet
@@ -262,42 +262,65 @@ class Reduction:
 
     @cached_property
     def sample_table(self) -> pd.DataFrame:
-        """The samples as a table `energy.read_samples` takes: units and bases in the headers.
+        """The samples as a table `energy.read_samples` takes: gross energy with u, residual moisture, yield, and how many runs.
 
-        Where a sample was burnt wet its gross energy stands as is; the others as analysed, with the powder's residual
-        moisture and yield. The column n counts the runs.
+        One row per sample, as analysed or (burnt wet) as is; where a sheet holds both, one row per result, since a wide
+        column has one basis.
         """
         import pandas as pd
 
         found = self.samples[self.samples["n"] > 0]
-        wet = found["basis"] == "as_is"
-        table: dict[str, Any] = {"sample_id": found["sample_id"]}
-        for words, mask in (("as analysed", ~wet), ("as is", wet)):
-            if mask.any():
-                table[f"gross_energy [MJ/kg {words}]"] = found["gross_energy"].where(mask)
-        table["u(gross_energy) [MJ/kg]"] = found["u"]
+        if found["basis"].nunique() <= 1:
+            return self._wide(None)
+        lines = [found[["sample_id", "basis", "u", "n"]].assign(analyte="gross_energy", result=found["gross_energy"],
+                                                                unit="MJ/kg")]  # fmt: skip
         for column in ("residual_moisture", "preparation_yield"):
-            if found[column].notna().any():
-                table[f"{column} [%]"] = found[column] * 100
-        table["n"] = found["n"]
-        if wet.any() and not wet.all():
-            # one table, one basis: dry matter is the only one both kinds share
-            return pd.DataFrame({
-                "sample_id": found["sample_id"], "gross_energy [MJ/kg DM]": found["gross_energy_dry_matter"],
-                "u(gross_energy) [MJ/kg]": found["u_dry_matter"], "n": found["n"]})  # fmt: skip
-        return pd.DataFrame(table).reset_index(drop=True)
+            has = found[found[column].notna()]
+            lines.append(pd.DataFrame({"sample_id": has["sample_id"], "analyte": column, "result": has[column] * 100,
+                                       "unit": "%", "basis": ""}))  # fmt: skip
+        long = pd.concat([part for part in lines if len(part)], ignore_index=True)
+        return long[["sample_id", "analyte", "result", "unit", "basis", "u", "n"]].rename(columns={"n": "runs"})
 
-    def joined(self, table: pd.DataFrame) -> pd.DataFrame:
-        """A sample table (column sample_id) with the gross energies found here beside each sample; none is lost."""
+    def _wide(self, basis: str | None) -> pd.DataFrame:
+        import pandas as pd
+
+        found = self.samples[self.samples["n"] > 0].reset_index(drop=True)
+        on = basis or (str(found["basis"].iloc[0]) if len(found) else "as_analysed")
+        words = {"as_analysed": "as analysed", "as_is": "as is", "dry_matter": "DM"}.get(on)
+        if words is None:
+            raise WrongUse(f"The basis '{basis}' is not known here.", "One of: as_analysed, as_is, dry_matter.")
+        value, u = ("gross_energy", "u") if on == "as_analysed" else (f"gross_energy_{on}", f"u_{on}")
+        own = found["basis"] == on
+        table: dict[str, Any] = {
+            "sample_id": found["sample_id"],
+            f"gross_energy [MJ/kg {words}]": found["gross_energy"].where(own, found[value] if value in found and on !=
+                                                                         "as_analysed" else np.nan),
+            "u(gross_energy) [MJ/kg]": found["u"].where(own, found[u] if on != "as_analysed" else np.nan),
+        }  # fmt: skip
+        if on == "as_analysed":
+            for column in ("residual_moisture", "preparation_yield"):
+                if found[column].notna().any():
+                    table[f"{column} [%]"] = found[column] * 100
+        return pd.DataFrame({**table, "runs": found["n"]})
+
+    def joined(self, table: pd.DataFrame, basis: str | None = None) -> pd.DataFrame:
+        """A wide sample table (column sample_id) with the gross energies found here beside each sample; no row is lost.
+
+        basis : as_analysed, as_is or dry_matter; needed where the sheet holds samples burnt wet and others. Raises WrongUse.
+        """
         if "sample_id" not in table.columns:
             raise WrongUse("The sample table has no column sample_id.", "Give the table with its sample ids.")
-        taken = [c for c in self.sample_table.columns if c != "sample_id" and c in table.columns]
+        if basis is None and self.samples["basis"].nunique() > 1:
+            raise WrongUse("Some samples were burnt wet, others as a powder.",
+                           "Choose one basis for the column: basis='dry_matter' or 'as_is'.")  # fmt: skip
+        mine = self._wide(basis)
+        taken = [c for c in mine.columns if c != "sample_id" and c in table.columns]
         if taken:
             raise WrongUse(
                 f"The sample table already has {', '.join(taken)}.", "Drop or rename the older columns first."
             )
         left = table.assign(sample_id=table["sample_id"].astype(str))
-        return left.merge(self.sample_table.assign(sample_id=lambda t: t["sample_id"].astype(str)), "left", "sample_id")
+        return left.merge(mine.assign(sample_id=mine["sample_id"].astype(str)), "left", "sample_id")
 
     @cached_property
     def fuel_values(self) -> pd.DataFrame:

@@ -11,8 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-Floats = NDArray[np.float64]
-Flags = NDArray[np.bool_]
+from energy.bomb.drift import Drift, Flags, Floats, fit
 
 #: fewest readings a straight line is fitted to when the tool looks for the after period
 FEWEST = 5
@@ -158,10 +157,10 @@ def periods(
     """The three periods, found from the readings; a time given (one, or (n,) with NaN for 'find it') stands.
 
     Ignition is the last reading before the steps grow to 2 % of the steepest one, searched backwards from that step. The
-    after period is the longest run of last readings (at least five) of which each lies on the line through those behind
-    it, within four standard deviations of the readings or 0.01 % of the rise; its first half is then given to the main
-    period as far as that grows by half, so that the end of the combustion does not hide in the scatter. Where no such run exists the last readings
-    are taken and `steady` is False.
+    after period is the longest run of last readings (at least five) in which no two neighbours depart from the line through
+    those behind them by more than four standard deviations of a reading, 0.01 % of the rise and three quarters of the
+    thermometer's step. Its first half is then given to the main period as far as that grows by half, so that the end of the
+    combustion does not hide in the scatter. Where no such run exists the last readings are taken and `steady` is False.
     """
     t, temp = found.time, found.temperature
     n = len(t)
@@ -178,7 +177,7 @@ def periods(
     lit = _or(ignition, np.take_along_axis(used, fire[:, None], 1)[:, 0], n)
     with np.errstate(invalid="ignore"):
         fore = np.where(used <= lit[:, None], cut, np.nan)
-    begin, steady = _after(used, cut, np.maximum(steepest + 1, fire + 1), noise_of_line(used, fore))
+    begin, steady = _after(used, cut, np.maximum(steepest + 1, fire + 1), fit(used, fore))
     begin = _longer(used, fire, begin)
     end = _or(main_end, np.take_along_axis(used, begin[:, None], 1)[:, 0], n)
     given = ~np.isnan(np.full(n, np.nan) if main_end is None else np.broadcast_to(np.asarray(main_end, float), n))
@@ -206,24 +205,7 @@ def _ignition(t: Floats, temp: Floats) -> tuple[NDArray[np.intp], NDArray[np.int
     return np.maximum(reach, first), steepest
 
 
-def noise_of_line(t: Floats, temp: Floats) -> tuple[Floats, NDArray[np.intp]]:
-    """(n,) residual sum of squares about a straight line through the readings that are not NaN, and its freedom."""
-    ok = ~np.isnan(temp) & ~np.isnan(t)
-    count = ok.sum(axis=1)
-    some = np.maximum(count, 1)
-    x = np.where(ok, t, 0.0)
-    y = np.where(ok, temp, 0.0)
-    x = np.where(ok, x - (x.sum(axis=1) / some)[:, None], 0.0)
-    y = np.where(ok, y - (y.sum(axis=1) / some)[:, None], 0.0)
-    sxx = (x * x).sum(axis=1)
-    slope = np.divide((x * y).sum(axis=1), sxx, out=np.zeros(len(t)), where=sxx > 0)
-    rest = np.where(ok, y - slope[:, None] * x, 0.0)
-    return (rest**2).sum(axis=1), np.maximum(count - 2, 0)
-
-
-def _after(
-    t: Floats, temp: Floats, earliest: NDArray[np.intp], fore: tuple[Floats, NDArray[np.intp]]
-) -> tuple[NDArray[np.intp], Flags]:
+def _after(t: Floats, temp: Floats, earliest: NDArray[np.intp], fore: Drift) -> tuple[NDArray[np.intp], Flags]:
     """Index of the after period's first reading, and whether it is straight.
 
     Lines through all runs of last readings at once, by sums taken from the end.
@@ -246,20 +228,23 @@ def _after(
         slope = cxy / cxx
         rest = np.maximum(cyy - slope * cxy, 0.0)
         centre = sx / count
-        # a reading against the line through those behind it
-        ahead = x[:, :-1] - centre[:, 1:]
-        departure = y[:, :-1] - (sy / count)[:, 1:] - slope[:, 1:] * ahead
-        leverage = 1 + 1 / count[:, 1:] + ahead**2 / cxx[:, 1:]
-    tail = np.maximum(np.where(ok, index, -1).max(axis=1) - FEWEST + 1, 0)
-    freedom = FEWEST - 2 + fore[1]
-    noise2 = (rest[row, tail] + fore[0]) / freedom
-    whole = _span(temp)
-    floor = np.maximum(NO_ACCOUNT * whole, resolution(temp))[:, None]
+        # a reading and its neighbour against the line through those behind both
+        pair = []
+        for here in (slice(0, m - 2), slice(1, m - 1)):
+            ahead = x[:, here] - centre[:, 2:]
+            departure = y[:, here] - (sy / count)[:, 2:] - slope[:, 2:] * ahead
+            pair.append((departure, 1 + 1 / count[:, 2:] + ahead**2 / cxx[:, 2:]))
+    tail = np.maximum(last - FEWEST + 1, 0)
+    known = np.maximum(fore.count - 2, 0)
+    noise2 = (rest[row, tail] + known * np.nan_to_num(fore.sd) ** 2) / (FEWEST - 2 + known)
+    floor = np.maximum(NO_ACCOUNT * _span(temp), 0.75 * resolution(temp))[:, None]
     with np.errstate(invalid="ignore"):
-        out = (np.abs(departure) > np.maximum(BEYOND * np.sqrt(noise2[:, None] * leverage), floor)) & ok[:, :-1]
-    # the line itself must have three readings before it can judge another
-    judged = index[:, :-1] <= (last - 3)[:, None]
-    before_tail = np.where(out & judged, index[:, :-1] + 1, 0).max(axis=1)
+        out = ok[:, :-2]
+        for departure, leverage in pair:
+            out = out & (np.abs(departure) > np.maximum(BEYOND * np.sqrt(noise2[:, None] * leverage), floor))
+    # the line itself must have three readings before it can judge others
+    judged = index[:, :-2] <= (last - 4)[:, None]
+    before_tail = np.where(out & judged, index[:, :-2] + 2, 0).max(axis=1)
     begin = np.maximum(before_tail, earliest)
     steady = (begin <= last - FEWEST + 1) & (last - earliest >= FEWEST - 1)
     fallback = np.maximum(last - FEWEST + 1, earliest)

@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from energy.bomb.constants import value as constant
-from energy.bomb.periods import Floats
+from energy.bomb.drift import Floats
 
 
 def powder_yield(received: ArrayLike, dried: ArrayLike) -> Floats:

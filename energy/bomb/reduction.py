@@ -12,9 +12,10 @@ from energy.bomb import corrections, heat_capacity
 from energy.bomb.cautions import over_rating, run_energy
 from energy.bomb.constants import value as constant
 from energy.bomb.corrections import SULFUR_REASON, Budget, Term
+from energy.bomb.drift import Floats
 from energy.bomb.heat_capacity import Calibration
 from energy.bomb.outcome import BIT, LACKS, Reduction
-from energy.bomb.periods import Floats, periods
+from energy.bomb.periods import periods
 from energy.bomb.rise import BIT as RISE_BIT
 from energy.bomb.rise import METHODS, Rise, corrected_rise
 from energy.bomb.runs import KINDS, RUN_STATUS, RunSheet, read_runs
@@ -23,7 +24,7 @@ from energy.quantities import dictionary
 
 CALIBRATION = KINDS.index("calibration")
 #: rises so many times smaller or larger than those of the calibration are told (ours)
-FAR = 2.0
+FAR = 3.0
 NITRIC_ACID = ("given", "share")
 
 
@@ -378,6 +379,7 @@ def _flag(
 ) -> None:
     """Set the bits of what is lacking and what is to be told."""
     burnt = ~calibrating
+    food = np.isin(sheet.kind_code, (KINDS.index("test"), KINDS.index("control")))
     flags[np.isnan(mass)] |= BIT["no_mass"]
     flags[np.isnan(rise)] |= BIT["no_rise"]
     flags[np.isnan(capacity) & burnt] |= BIT["no_heat_capacity"]
@@ -389,7 +391,7 @@ def _flag(
                 m, q = (np.nan_to_num(sheet.values(f"{term.name}_{what}")) for what in ("mass", "heat"))
                 flags[(m > 0) != (q > 0)] |= BIT["bag_bare"]
         low, high = dictionary()["gross_energy"].range
-        flags[burnt & ((gross < low * 1e3) | (gross > high * 1e3))] |= BIT["implausible"]
+        flags[food & ((gross < low * 1e3) | (gross > high * 1e3))] |= BIT["implausible"]
         flags[over_rating(energy, rated)] |= BIT["over_rating"]
         lows, highs = (np.array([getattr(c, a) for c in known] or [np.nan]) for a in ("low", "high"))
         near, far = np.where(code >= 0, lows[code], np.nan), np.where(code >= 0, highs[code], np.nan)

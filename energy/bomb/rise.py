@@ -12,7 +12,8 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from energy.bomb.constants import value as constant
-from energy.bomb.periods import Flags, Floats, Periods, Records, periods, resolution
+from energy.bomb.drift import Drift, Flags, Floats, fit
+from energy.bomb.periods import Periods, Records, periods, resolution
 from energy.problems import WrongUse
 
 METHODS = {
@@ -30,6 +31,8 @@ WARNINGS = {
     " zero; give the fore period, or its drift",
     "not_steady": "the after period is not steady: its rate still changes, and the corrected rise depends on the readings"
     " chosen; record longer, or set the end of the main period",
+    "short_after": "the after period is short beside the main period, so that its drift is carried over four times its own"
+    " length or more; record longer, or set the end of the main period",
     "coarse": "the thermometer's step is coarse for this rise; read one more decimal",
     "disordered": "readings were out of order of time, or two have one time; they were put in order, check the times",
     "falls_in_rise": "the temperature falls inside the main period: a swapped or misread reading",
@@ -38,26 +41,8 @@ WARNINGS = {
 BIT = {name: 1 << k for k, name in enumerate(WARNINGS)}
 #: fewest readings of a record, and of a fitted drift
 FEWEST_READINGS, FEWEST_DRIFT = 6, 3
-
-
-@dataclass(frozen=True)
-class Drift:
-    """A drift of n records: rate (K per unit of time) at the mean time and temperature of its readings.
-
-    sd : residual standard deviation about the line, NaN under three readings. count : readings. sxx : sum of squares of
-    their times about the mean time.
-    """
-
-    rate: Floats
-    time: Floats
-    temperature: Floats
-    sd: Floats
-    count: NDArray[np.intp]
-    sxx: Floats
-
-    def at(self, time: Floats) -> Floats:
-        """The line's temperature."""
-        return self.temperature + self.rate * (time - self.time)
+#: the after period's drift is carried over a main period of at most so many times its length untold (ours)
+LONGEST_REACH = 4.0
 
 
 @dataclass(frozen=True)
@@ -94,23 +79,6 @@ class Rise:
         if i in self.left_out:
             said.append("left out: " + ", ".join(f"{temp:g} °C at {time:g}" for time, temp in self.left_out[i]))
         return said
-
-
-def fit(t: Floats, temp: Floats) -> Drift:
-    """Straight lines through the readings of each row that are not NaN."""
-    ok = ~np.isnan(temp) & ~np.isnan(t)
-    count = ok.sum(axis=1)
-    some = np.maximum(count, 1)
-    mean_t = np.where(ok, t, 0.0).sum(axis=1) / some
-    mean_y = np.where(ok, temp, 0.0).sum(axis=1) / some
-    x = np.where(ok, t - mean_t[:, None], 0.0)
-    y = np.where(ok, temp - mean_y[:, None], 0.0)
-    sxx = (x * x).sum(axis=1)
-    rate = np.divide((x * y).sum(axis=1), sxx, out=np.zeros(len(t)), where=sxx > 0)
-    rest = np.where(ok, y - rate[:, None] * x, 0.0)
-    with np.errstate(invalid="ignore", divide="ignore"):
-        sd = np.where(count > 2, np.sqrt((rest**2).sum(axis=1) / (count - 2)), np.nan)
-    return Drift(rate, mean_t, mean_y, sd, count, sxx)
 
 
 def _given(drift: Drift, given: tuple[ArrayLike, ArrayLike] | None) -> tuple[Drift, Flags]:
@@ -193,7 +161,9 @@ def corrected_rise(
             + np.where(after.sxx > 0, slopes[3] ** 2 / np.where(after.sxx > 0, after.sxx, 1.0), 0.0)
             + extra
         )
-        u = np.sqrt(variance + cut**2 + step**2 / 6)  # two rectangular roundings: 2 x step^2 / 12
+        # two rectangular roundings, 2 x step^2 / 12; and drifts slower than the thermometer's step shows
+        hidden = step / np.sqrt(12) * length / (bounds.after_end - bounds.main_end)
+        u = np.sqrt(variance + cut**2 + step**2 / 6 + np.where(after_known, 0.0, hidden) ** 2)
     warned, change = _warnings(found, bounds, after, value, u, step, inside, no_fore, noise2, after_known)
     unreadable = (warned & BIT["unreadable"]) > 0
     value = np.where(unreadable, np.nan, value)
@@ -283,7 +253,8 @@ def _warnings(
         fall = inside[:, 1:] & inside[:, :-1] & (drop < -(4 * np.sqrt(2 * noise2) + 1.5 * step)[:, None])
         climbing = temp[:, :-1] < (bounds_temperature(found, bounds) - 0.05 * value)[:, None]
         falls = (fall & climbing).any(axis=1)
-    told = {"unreadable": unreadable, "no_fore_period": no_fore, "not_steady": unsteady, "coarse": coarse,
+        brief = ((bounds.after_end - bounds.main_end) * LONGEST_REACH <= length) & ~after_known
+    told = {"unreadable": unreadable, "no_fore_period": no_fore, "not_steady": unsteady, "short_after": brief, "coarse": coarse,
             "disordered": found.disordered, "falls_in_rise": falls, "impossible": found.impossible > 0}  # fmt: skip
     warned = np.zeros(len(t), dtype=np.int64)
     for name, where in told.items():

@@ -20,7 +20,8 @@ from numpy.typing import NDArray
 
 from energy import cells
 from energy.bomb.constants import CALORIE
-from energy.bomb.periods import Flags, Floats, Records, records_of_long
+from energy.bomb.drift import Flags, Floats
+from energy.bomb.periods import Records, records_of_long
 from energy.bomb.preparation import day_warning
 from energy.headers import split_header
 from energy.problems import Problem, StructuralProblems, UnitProblem, WrongUse
@@ -290,6 +291,10 @@ class _Reader:
                                                header, None, "warning"))  # fmt: skip
 
     def _identities(self, places: dict[int, tuple[str, float, bool]]) -> None:
+        if not any(c in ("sample_mass", "total_mass") for c, _, _ in places.values()):
+            self.stop(
+                "there is no column sample_mass.", "Add 'sample_mass [g]', or 'total_mass [g]' with the bag's mass."
+            )
         column = next((k for k, (c, _, _) in places.items() if c == "run_id"), None)
         if column is None:
             self.stop("there is no column run_id.", "Add one: a unique text per firing.")
@@ -302,10 +307,6 @@ class _Reader:
                 self.stop(f"the run_id stands twice (first in row {seen[identity]}).", "Give every firing its own.",
                           "run_id", row, str(identity))  # fmt: skip
             seen.setdefault(str(identity), row)
-        if not any(c in ("sample_mass", "total_mass") for c, _, _ in places.values()):
-            self.stop(
-                "there is no column sample_mass.", "Add 'sample_mass [g]', or 'total_mass [g]' with the bag's mass."
-            )
 
     def tell(self, i: int, what: str, cure: str, column: str, value: str, severity: str = "cell") -> None:
         sheet = self.sheet
