@@ -7,7 +7,7 @@ import re
 from dataclasses import dataclass
 
 from energy.problems import Problem, UnitProblem
-from energy.quantities import TEXT_COLUMNS, dictionary, method_columns, normal_form, synonym_index
+from energy.quantities import TEXT_COLUMNS, Quantity, dictionary, method_columns, normal_form, synonym_index
 from energy.samples import BASES
 from energy.units import Unit, parse_unit
 
@@ -95,7 +95,7 @@ def read_header(header: str, where: str, units: dict[str, str], basis: str | Non
         unit_text = "1"
     if unit_text is None or (not unit_text and entry.dimension != "number"):
         what = f"{entry.title} has no unit."
-        cure = f"Write '{name} [unit basis]', for example '{name} [{_example(entry.dimension, entry.basis)}]'."
+        cure = f"Write '{name} [unit basis]', for example '{name} [{_example(entry)}]'."
         return Meaning(header, kind, quantity, replicate, problem=_problem(header, where, what, cure, "unit"))
     try:
         unit = parse_unit(unit_text, entry.dimension)
@@ -105,15 +105,11 @@ def read_header(header: str, where: str, units: dict[str, str], basis: str | Non
         bare = basis_of(unit_text)
         what = f"{entry.title} has no unit, only a basis." if bare else f"the unit '{unit_text}': {found.what}"
         plain_kinds = ("fraction", "number", "mass", "heat", "gas_yield")
-        cure = (
-            f"Write '{name} [{_example(entry.dimension, entry.basis)}]'."
-            if entry.dimension in plain_kinds
-            else found.cure
-        )
+        cure = f"Write '{name} [{_example(entry)}]'." if entry.dimension in plain_kinds else found.cure
         return Meaning(header, kind, quantity, replicate, basis=bare,
                        problem=_problem(header, where, what, cure, "unit"))  # fmt: skip
     stated = entry.basis == "stated"
-    if not stated and unit.basis not in (None, entry.basis):
+    if not stated and not entry.own_matter and unit.basis not in (None, entry.basis):
         meant = {
             "none": "no basis",
             "as_is": "the material as it is",
@@ -123,6 +119,12 @@ def read_header(header: str, where: str, units: dict[str, str], basis: str | Non
         what = f"{entry.title} is a figure of {meant}; on '{(unit.basis or '').replace('_', ' ')}' it would mean something else."
         cure = f"Give '{name} [{unit.display}]', or leave the column out."
         return Meaning(header, kind, quantity, replicate, problem=_problem(header, where, what, cure, "name"))
+    if entry.own_matter and not is_u and (unit.basis or basis) != entry.basis:
+        what = f"{entry.title} in {unit.display or unit_text}: it is not said that this is of its own dry matter."
+        cure = (
+            f"Write '{name} [{unit.display} DM]'; the moisture in the table is that of the feed and leads nowhere here."
+        )
+        return Meaning(header, kind, quantity, replicate, unit, problem=_problem(header, where, what, cure, "basis"))
     on = unit.basis or (basis if stated else None)
     if stated and on is None and not is_u:
         what = f"{entry.title} in {unit.display or unit_text}: the basis is not said."
@@ -131,10 +133,10 @@ def read_header(header: str, where: str, units: dict[str, str], basis: str | Non
     return Meaning(header, kind, quantity, replicate, unit, on, implied)
 
 
-def _example(dimension: str, basis: str) -> str:
+def _example(entry: Quantity) -> str:
     unit = {"energy": "kJ/100 g", "density": "g/ml", "fraction": "%", "number": "1", "mass": "kg", "heat": "kJ",
-            "gas_yield": "ml/200 mg"}.get(dimension, "g/100 g")  # fmt: skip
-    return f"{unit} as is" if basis == "stated" else unit
+            "gas_yield": "ml/200 mg"}.get(entry.dimension, "g/100 g")  # fmt: skip
+    return f"{unit} DM" if entry.own_matter else f"{unit} as is" if entry.basis == "stated" else unit
 
 
 def _problem(header: str, where: str, what: str, cure: str, about: str) -> Problem:

@@ -45,7 +45,8 @@ class Quantity:
     dimension : mass_fraction, fraction, energy (per mass), density, number, mass, heat or gas_yield.
     basis : "stated" (the table must say it) or the one the quantity has by its meaning.
     range : plausible bounds in internal units. default_u : (absolute, relative) in internal units. absent_u : standard
-    uncertainty of a value that is not given and therefore counted as zero.
+    uncertainty of a value that is not given and therefore counted as zero. own_matter : of faeces or excreta; the table
+    must say that it is of their dry matter, since only the feed's moisture is in it.
     """
 
     name: str
@@ -63,6 +64,7 @@ class Quantity:
     default_u_status: str = ""
     absent_u: float = 0.0
     note: str = ""
+    own_matter: bool = False
     header_implies: dict[str, str] = field(default_factory=dict)
 
 
@@ -102,6 +104,7 @@ def _quantity(name: str, entry: dict[str, Any], shared: dict[str, Any]) -> Quant
         default_u_status=status,
         absent_u=float(entry.get("absent_u", 0.0)) * scale,
         note=entry.get("note", ""),
+        own_matter=bool(entry.get("own_matter", False)),
         header_implies=dict(entry.get("header_implies", {})),
     )
 

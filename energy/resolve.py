@@ -194,7 +194,13 @@ class Resolver:
         node: Node = name + "?" if filled else name
         if name not in self.stated or self.stated[name] == self.signature.working:
             return node
-        return bases.convert(node, self._dry(self.stated[name]), self._dry(self.signature.working))
+        return self._onto(node, name, self.stated[name], self.signature.working)
+
+    def _onto(self, node: Node, name: str | None, source: str, goal: str) -> Node | None:
+        """A quantity of one basis on another; a mass of feed grows with the water where an amount per mass shrinks."""
+        ends = self._dry(source), self._dry(goal)
+        known = dictionary().get(str(name))
+        return bases.convert(node, *(ends[::-1] if known is not None and known.dimension == "mass" else ends))
 
     def quantity(self, name: str, nitrogen_factor: float | str = "own", filled: bool = False) -> Node | None:
         """Any quantity on the working basis, by the rule that holds in these rows; None if it cannot be had."""
@@ -294,14 +300,15 @@ class Resolver:
             node = self.quantity(symbol.quantity, system.nitrogen_factor, filled=symbol.absent != "missing_input")
             basis = symbol.basis if bound.basis in (None, "any") else bound.basis
         if node is not None and basis not in (None, "any", self.signature.working):
-            node = bases.convert(node, self._dry(self.signature.working), self._dry(str(basis)))
+            name = None if bound.symbol == "result" else system.symbols[bound.symbol].quantity
+            node = self._onto(node, name, self.signature.working, str(basis))
         return None if node is None else multiply(1.0 / bound.scale, node)
 
     def _in_paper_units(self, node: Node, symbol: Symbol, system: System) -> Node | None:
         """A quantity on the working basis, in the unit and on the basis of a formula's symbol."""
         working = self.signature.working
         if symbol.basis not in (None, "any", working) and not system.homogeneous:
-            found = bases.convert(node, self._dry(working), self._dry(str(symbol.basis)))
+            found = self._onto(node, symbol.quantity, working, str(symbol.basis))
             if found is None:
                 return None
             node = found

@@ -30,8 +30,6 @@ GAINS = {
 }  # fmt: skip
 #: losses of energy per mass of feed: of the energies, only what is named here or in GAINS is per mass of this feed
 LOSSES = ("faecal_energy", "urinary_energy", "methane_energy", "heat_increment", "heat_production")
-#: mass fractions that are not per mass of the feed
-ELSEWHERE = ("nitrogen_of_excreta", "marker_in_excreta", "marker_in_faeces")
 
 
 def correct(samples: Samples) -> None:
@@ -83,7 +81,7 @@ def _apply(samples: Samples, dry: np.ndarray, factor: np.ndarray, added: np.ndar
     """Put the matter back in place. dry, added: kg per kg as is; factor: oven dry matter over the corrected one."""
     on_basis = _scale_and_gain(samples, dry, factor, added)
     for name, basis in samples.basis.items():
-        of_feed = dictionary()[name].dimension == "mass_fraction" and name not in ELSEWHERE
+        of_feed = dictionary()[name].dimension == "mass_fraction"
         if of_feed or name in GAINS or name in LOSSES:
             scale, gain = (np.choose(basis, [pair[k] for pair in on_basis]) for k in (0, 1))
             _rescale(samples, name, scale, GAINS.get(name, 0.0) * gain)

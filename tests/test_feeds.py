@@ -213,7 +213,7 @@ def test_negative_nitrogen_balance_puts_amen_above_ame_and_is_not_clipped():
 
 def test_a_trial_compares_poultry_by_nitrogen_corrected_energy():
     """1 kg eaten with 18 MJ, 0.25 kg excreta with 15 MJ/kg, 8 g N retained: 18 - 3.75 - 0.27512."""
-    trial = {"gross energy [MJ/kg DM]": 18.0, "feed intake [kg]": 1.0, "excreta output [kg]": 0.25,
+    trial = {"gross energy [MJ/kg DM]": 18.0, "feed intake [kg DM]": 1.0, "excreta output [kg DM]": 0.25,
              "gross energy of excreta [MJ/kg DM]": 15.0, "nitrogen retained [g/kg DM]": 8.0}  # fmt: skip
     a = assess("poultry", "MJ/kg DM", "default", **PIG, **trial)
     assert figure(a, "trial_chain_amen_total")["value"] == pytest.approx(18 - 3.75 - 0.03439 * 8)

@@ -279,7 +279,7 @@ def test_moisture_on_dry_matter_is_not_taken_for_moisture():
 
 @pytest.mark.parametrize(
     ("header", "cure"),
-    [("gas production [ml]", "[ml/200 mg]"), ("energy digestibility [g]", "[%]"), ("feed intake [%]", "[kg]"),
+    [("gas production [ml]", "[ml/200 mg]"), ("energy digestibility [g]", "[%]"), ("feed intake [%]", "[kg as is]"),
      ("gross energy consumed [MJ/kg]", "[kJ]")],
 )  # fmt: skip
 def test_a_wrong_unit_of_a_feed_column_is_told_with_a_right_one(header, cure):

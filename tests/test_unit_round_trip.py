@@ -56,6 +56,10 @@ def written(values, draw):
         basis, divisor = "", 1.0
         if q.basis == "stated":
             basis, divisor = draw([(" as is", 1.0), (" DM", values["dry_matter"])])
+            if q.dimension == "mass":  # of feed: less of it is dry
+                divisor = 1 / divisor
+        elif q.own_matter:
+            basis = " DM"
         row[f"{name} [{unit}{basis}]"] = value / divisor * size
     return energy.read_samples(pd.DataFrame([row]), target="none")
 
