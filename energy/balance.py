@@ -35,6 +35,8 @@ DETERMINED = {
 }
 #: what the sum needs to be whole, by the determined carbohydrate
 NEEDED = {"available_carbohydrate": ("total_dietary_fibre",), "carbohydrate_total": ()}
+#: what is a part of what
+WHOLE = {"sugars": "available_carbohydrate", "starch": "available_carbohydrate"}
 
 
 @dataclass
@@ -59,7 +61,12 @@ class Balances:
         low, high = dictionary()[name].range
         true = self.samples.columns[name] - self.columns[name]["size"]
         room = 2 * self.samples.u[name]
-        return np.asarray((true >= low - room) & (true <= high + room))
+        fine = (true >= low - room) & (true <= high + room)
+        whole = self.samples.columns.get(WHOLE.get(name, ""))
+        if whole is not None:  # a part of a carbohydrate is no larger than it, stated on one basis
+            alike = self.samples.basis[name] == self.samples.basis[WHOLE[name]]
+            fine &= ~alike | np.isnan(whole) | (true <= whole + room)
+        return np.asarray(fine)
 
     def suspected(self) -> tuple[list[str], np.ndarray]:
         """Names of the columns and their ratio (k, n), 0 for those that can be told from the likeliest culprit."""

@@ -283,10 +283,12 @@ def questions(a: Assessment, sample_id: str) -> list[tuple[str, str]]:
         parts = [sums.sum(), *(sums.get(x, 0.0) for x in ("measurement", "heats", "convention"))]
         routes = (
             f"{VERDICTS[a.verdict[p, row]]} in the measurement part. Bomb less composition is {parts[0]:+.2f} {unit}: "
-            f"measurement {parts[1]:+.2f}, heats {parts[2]:+.2f}, convention {parts[3]:+.2f}. The convention part is expected "
-            f"between {b.pairs[p].bomb} and {shown_system(a, b.pairs[p].composition).id}"
+            f"measurement {parts[1]:+.2f}, heats {parts[2]:+.2f}, convention {parts[3]:+.2f}"
         )
-    probable = f"{cause[row]}. Next: {following[row]}" if cause[row] else _no_cause(int(a.verdict[0, row]))
+        if b.pairs[p].stage != "GE":  # at GE both sides are heats of combustion: there is no convention between them
+            routes += f". The convention part is expected between {b.pairs[p].bomb} and {shown_system(a, b.pairs[p].composition).id}"
+    probable = cause[row] or _no_cause(int(a.verdict[0, row]))
+    probable += f". Next: {following[row]}" if following[row] else ""
     return [
         ("What does the bomb say?", _say(a, measured, row)),
         ("Do bomb and composition describe the same material?", f"{ge}: {material}{balance_words(a, row)}"),
@@ -324,9 +326,7 @@ def balance_words(a: Assessment, row: int) -> str:
 
 def _no_cause(code: int) -> str:
     if code == INCONCLUSIVE:
-        return (
-            "no cause is named: the measurements do not decide. Next: more bomb runs, or a smaller u of the composition"
-        )
+        return "no cause is named: the measurements do not decide"
     if code in (SINGLE_ROUTE, NOT_COMPUTED):
         return "no cause is named: there is nothing to compare. Next: the route that is missing"
     return "no cause is named: bomb and composition describe the same material"
