@@ -6,6 +6,7 @@ method can be made robust to a few wild samples, which are named by index and ne
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -25,6 +26,9 @@ WILD = 3.5
 NEEDED, NEEDED_FOR_A_LINE = 3, 8
 #: Passing and Bablok's line wants 30 pairs or more; its slopes number n (n - 1) / 2, which ends where memory does
 ADVISED, MOST = 30, 5_000
+
+#: above this a concordance has nothing worth a cause. Ours
+NEAR_PERFECT = 0.99
 
 
 def complete(x: ArrayLike, y: ArrayLike, needed: int = NEEDED) -> tuple[Floats, Floats, NDArray[np.intp]]:
@@ -99,7 +103,8 @@ class LimitsOfAgreement:
         u = f" {unit}" if unit else ""
         level = (f"The difference changes with the level, by {self.slope:+.3g} per unit (p {self.p_slope:.2g}); one bias does not"
                  " describe it." if self.proportional else f"It does not change with the level (p {self.p_slope:.2g}).")  # fmt: skip
-        wild = f" {len(self.wild)} of {self.n} differ wildly from the rest." if self.wild else ""
+        verb = "differs" if len(self.wild) == 1 else "differ"
+        wild = f" {len(self.wild)} of {self.n} {verb} wildly from the rest." if self.wild else ""
         return (f"Over {self.n} samples the difference is {self.bias:+.3g}{u} on average"
                 f" ({self.bias_interval[0]:+.3g} to {self.bias_interval[1]:+.3g}); 95 of 100 single differences lie between"
                 f" {self.lower:+.3g} and {self.upper:+.3g}{u}. {level}{wild}")  # fmt: skip
@@ -211,17 +216,11 @@ def deming(
     n = len(a)
     if a.std() == 0:
         raise WrongUse("All samples have one value of x; no line can be drawn.", "Give samples of different level.")
-    whole = np.ones((1, n))
-    slope, intercept = (float(p[0]) for p in _deming_lines(a, b, whole, ratio, constant_relative_error))
-    # the jackknife in blocks, so that n samples never make one n x n matrix of a large batch
-    left_out = [np.zeros((2, 0))]
-    block = max(1, 4_000_000 // n)
-    for start in range(0, n, block):
-        stop = min(start + block, n)
-        keep = np.ones((stop - start, n))
-        keep[np.arange(stop - start), np.arange(start, stop)] = 0.0
-        left_out.append(np.array(_deming_lines(a, b, keep, ratio, constant_relative_error)))
-    pseudo = n * np.array([[slope], [intercept]]) - (n - 1) * np.concatenate(left_out, axis=1)
+    if constant_relative_error:
+        slope, intercept, left_out = _weighted_deming(a, b, ratio)
+    else:
+        slope, intercept, left_out = _plain_deming(a, b, ratio)
+    pseudo = n * np.array([[slope], [intercept]]) - (n - 1) * left_out
     se = pseudo.std(axis=1, ddof=1) / np.sqrt(n)
     t = float(stdtrit(n - 2, 0.975))
     name = "weighted Deming" if constant_relative_error else "Deming"
@@ -231,22 +230,49 @@ def deming(
                 {"slope_se": float(se[0]), "intercept_se": float(se[1])})  # fmt: skip
 
 
-def _deming_lines(x: Floats, y: Floats, keep: Floats, ratio: float, relative: bool) -> tuple[Floats, Floats]:
-    """(k,) slopes and intercepts for (k, n) weights of the pairs."""
-    weights = keep
-    slope = intercept = np.empty(len(keep))
-    for _ in range(50 if relative else 1):
-        total = weights.sum(axis=1)
-        mean_x, mean_y = weights @ x / total, weights @ y / total
-        s_xx = weights @ (x * x) - total * mean_x**2
-        s_yy = weights @ (y * y) - total * mean_y**2
-        s_xy = weights @ (x * y) - total * mean_x * mean_y
+def _line_of_sums(n: Floats | float, sums: Sequence[Floats], ratio: float) -> tuple[Floats, Floats]:
+    """Slope and intercept from the sum of the weights and the weighted sums of x, y, x^2, y^2 and x y."""
+    x, y, xx, yy, xy = sums
+    gap = (yy - y**2 / n) - ratio * (xx - x**2 / n)
+    s_xy = xy - x * y / n
+    with np.errstate(divide="ignore", invalid="ignore"):
+        slope = (gap + np.sqrt(gap**2 + 4 * ratio * s_xy**2)) / (2 * s_xy)
+    return slope, (y - slope * x) / n
+
+
+def _plain_deming(x: Floats, y: Floats, ratio: float) -> tuple[float, float, Floats]:
+    """The line, and the (2, n) lines without each pair: sums less the pair's own part."""
+    mid_x, mid_y = float(x.mean()), float(y.mean())
+    u, v = x - mid_x, y - mid_y  # centred, so that sums of squares keep their digits
+    parts = (u, v, u * u, v * v, u * v)
+    sums = [np.asarray(part.sum()) for part in parts]
+    slope, rest = _line_of_sums(float(len(x)), sums, ratio)
+    slopes, rests = _line_of_sums(len(x) - 1.0, [s - p for s, p in zip(sums, parts, strict=True)], ratio)
+    return (float(slope), float(rest + mid_y - slope * mid_x), np.array([slopes, rests + mid_y - slopes * mid_x]))
+
+
+def _weighted_deming(x: Floats, y: Floats, ratio: float) -> tuple[float, float, Floats]:
+    """The same with weights that follow the line; the jackknife in blocks of lines, each settled by itself."""
+    n = len(x)
+    slope, intercept = _settled(x, y, np.ones((1, n)), ratio)
+    left_out = []
+    block = max(1, 4_000_000 // n)
+    for start in range(0, n, block):
+        stop = min(start + block, n)
+        keep = np.ones((stop - start, n))
+        keep[np.arange(stop - start), np.arange(start, stop)] = 0.0
+        left_out.append(np.array(_settled(x, y, keep, ratio)))
+    return float(slope[0]), float(intercept[0]), np.concatenate(left_out, axis=1)
+
+
+def _settled(x: Floats, y: Floats, keep: Floats, ratio: float) -> tuple[Floats, Floats]:
+    """(k,) slopes and intercepts for (k, n) pairs kept, weights 1 / level^2 until the slopes stand still."""
+    weights, slope = keep, np.full(len(keep), np.nan)
+    for _ in range(50):
         before = slope
-        gap = s_yy - ratio * s_xx
-        with np.errstate(divide="ignore", invalid="ignore"):
-            slope = (gap + np.sqrt(gap**2 + 4 * ratio * s_xy**2)) / (2 * s_xy)
-        intercept = mean_y - slope * mean_x
-        if not relative or (np.abs(slope - before) < 1e-12 * np.abs(slope)).all():
+        sums = [weights @ part for part in (x, y, x * x, y * y, x * y)]
+        slope, intercept = _line_of_sums(weights.sum(axis=1), sums, ratio)
+        if (np.abs(slope - before) < 1e-12 * np.abs(slope)).all():
             break
         away = y - intercept[:, None] - slope[:, None] * x
         below = (ratio + slope**2)[:, None]
@@ -323,8 +349,9 @@ class Concordance:
     def sentence(self) -> str:
         """The result as people say it, with what lowers it."""
         cause = "scatter" if self.correlation <= self.accuracy else "a difference of level or spread"
-        return (f"Lin's concordance over {self.n} samples is {self.value:.3f} ({self.interval[0]:.3f} to {self.interval[1]:.3f}),"
-                f" lowered mostly by {cause}; it rises with the range of the samples.")  # fmt: skip
+        lowered = f", lowered mostly by {cause}" if self.value < NEAR_PERFECT else ""
+        return (f"Lin's concordance over {self.n} samples is {self.value:.4g} ({self.interval[0]:.4g} to"
+                f" {self.interval[1]:.4g}){lowered}; it rises with the range of the samples.")  # fmt: skip
 
 
 def concordance(

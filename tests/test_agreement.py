@@ -82,7 +82,7 @@ def test_robust_limits_hardly_move_with_a_wild_sample():
     assert wild.sd > 5 * clean.sd
     assert robust.sd == pytest.approx(clean.sd, rel=0.2)
     assert robust.wild == (3,)
-    assert "1 of 40 differ wildly" in robust.sentence("MJ/kg")
+    assert "1 of 40 differs wildly" in robust.sentence("MJ/kg")
 
 
 # ---- Deming ----------------------------------------------------------------------------------------------------------

@@ -47,6 +47,15 @@ def test_the_demo_and_its_verdicts_stand_on_the_first_screen(app):
     assert "Gross energy: " in everything(app)
 
 
+def test_the_agreement_of_the_batch_stands_under_the_board(app):
+    said = everything(app)
+    assert "Bomb less composition. Over 31 samples" in said
+    assert "along the 31 samples" in said  # of a drift of the gross energy
+    app.segmented_control(key="agreement_in").set_value("energy").run()
+    assert not app.exception
+    assert "kJ/100 g as is on average" in everything(app)
+
+
 def test_a_planted_slip_is_told_in_a_sentence_with_what_to_do(app):
     # demo sample F01: its gross energy was typed in kcal and called kJ
     assert "The gross energy looks like kilocalories entered as kilojoules" in everything(app)

@@ -8,7 +8,7 @@ import streamlit as st
 
 from energy.assessment import Assessment, demo_paths
 from energy.intake import inspect_table
-from energy.pages import drawing, session
+from energy.pages import agreement_plots, drawing, session
 from energy.problems import EnergyError
 from energy.report import board as boards
 from energy.report import screen
@@ -234,6 +234,9 @@ if assessment is None:
     mapping()
 else:
     board(assessment)
+    with st.expander("Do the routes agree over the whole batch?"):
+        stage = st.session_state.get("stage")
+        agreement_plots.agreement_panel(assessment, stage if stage in screen.stages(assessment) else "GE")
     if assessment.problems:
         st.subheader("Found while reading the table", anchor=False)
         session.problem_list(assessment.problems)
