@@ -12,6 +12,7 @@ from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from energy import run_commands
 from energy.problems import EnergyError, StructuralProblems
 
 if TYPE_CHECKING:
@@ -38,8 +39,9 @@ def parser() -> argparse.ArgumentParser:
     listing.add_argument("--stage")
     listing.add_argument("--route")
     listing.add_argument("--house", metavar="FILE", help="TOML file of the house's own equations")
+    run_commands.add(commands)
     template = commands.add_parser("template", help="an empty table to fill in")
-    template.add_argument("kind", choices=("samples", "long"))
+    template.add_argument("kind", choices=("samples", "long", "runs"))
     template.add_argument("--target", help="an animal's name gives the columns of a feed laboratory")
     commands.add_parser("demo", help=f"assess the invented demo foods and feeds; writes into ./{DEMO_FOLDER}/")
     return top
@@ -63,7 +65,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
     """Run a command; returns the exit code."""
     options = parser().parse_args(arguments)
     try:
-        run = {"assess": _assess, "equations": _equations, "template": _template, "demo": _demo}[options.command]
+        run = {"assess": _assess, "equations": _equations, "template": _template, "demo": _demo,
+               "reduce": run_commands.run, "calibrate": run_commands.run}[options.command]  # fmt: skip
         return run(options)
     except StructuralProblems as problems:
         _tell(str(problems))
@@ -180,6 +183,10 @@ def _template(options: argparse.Namespace) -> int:
             "total dietary fibre [g/100 g as is],ash [g/100 g as is],gross energy [kJ/100 g as is],"
             "gross energy #2 [kJ/100 g as is],u(gross energy) [kJ/100 g],declared energy [kJ/100 g]"
         )
+    elif options.kind == "runs":
+        from energy.bomb.runs import template
+
+        print(template())
     else:
         print("sample_id,name,analyte,result,unit,basis,method,loq,U,k,replicate")
     return 0

@@ -34,7 +34,7 @@ def read_samples(
     if unmistakable). Raises StructuralProblems with every problem that stops the file; lesser ones are in `.problems`.
     """
     raw = read_table(table, name)
-    wanted = _units(units)
+    wanted = units_given(units)
     on = _basis(basis)
     if decimal not in (None, "point", "comma"):
         raise WrongUse(f"decimal = '{decimal}' is not known.", "Use 'point' or 'comma'.")
@@ -56,7 +56,8 @@ def inspect_table(
     return [read_header(h, raw.where, dict(units or {}), basis) for h in raw.headers]
 
 
-def _units(units: Mapping[str, str] | str | Path | None) -> dict[str, str]:
+def units_given(units: Mapping[str, str] | str | Path | None) -> dict[str, str]:
+    """Header -> unit, from a mapping or a TOML file of such lines. Raises WrongUse."""
     if units is None or isinstance(units, Mapping):
         return dict(units or {})
     try:

@@ -11,7 +11,6 @@ from scipy.stats import linregress
 from uncertainties import ufloat
 
 from energy.bomb import heat_capacity, open_vessel, preparation
-from energy.bomb.cautions import over_rating, rating_sentence, run_energy
 from energy.bomb.constants import CALORIE, constants, in_joule, value
 from energy.bomb.corrections import (
     SULFUR_REASON,
@@ -28,6 +27,7 @@ from energy.bomb.corrections import (
     sulfur,
 )
 from energy.bomb.net_value import constant_pressure, net_calorific_value
+from energy.bomb.rating import over_rating, rating_sentence, run_energy
 from energy.problems import WrongUse
 
 PRINTED = {r["id"]: float(r["printed"]) for r in csv.DictReader((Path(__file__).parent / "data" / "bomb_worked_examples.csv").open())}  # fmt: skip

@@ -19,7 +19,7 @@ LAYERS = [
     ],
     ["energy.interlaboratory", "energy.agreement"],
     ["energy.units"],
-    ["energy.bomb", "energy.bomb.constants", "energy.bomb.cautions", "energy.bomb.drift"],
+    ["energy.bomb", "energy.bomb.constants", "energy.bomb.cautions", "energy.bomb.rating", "energy.bomb.drift"],
     ["energy.bomb.periods", "energy.bomb.preparation"],
     ["energy.bomb.rise", "energy.bomb.corrections", "energy.bomb.net_value", "energy.bomb.open_vessel"],
     ["energy.bomb.heat_capacity", "energy.bomb.check_substance", "energy.bomb.charts"],
@@ -58,7 +58,7 @@ LAYERS = [
     ["energy.views"],
     ["energy.assessment"],
     ["energy.report", "energy.report.tables", "energy.report.board", "energy.report.document", "energy.report.screen"],
-    ["energy.report.entries", "energy.report.agreement"],
+    ["energy.report.entries", "energy.report.agreement", "energy.report.bench_work"],
     [
         "energy.pages",
         "energy.pages.drawing",
@@ -71,6 +71,7 @@ LAYERS = [
         "energy.pages.calorimeter",
         "energy.pages.declared",
     ],
+    ["energy.run_commands"],
     ["energy.__main__"],
 ]
 HEIGHT = {module: level for level, modules in enumerate(LAYERS) for module in modules}

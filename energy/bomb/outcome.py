@@ -10,13 +10,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from energy.bomb import net_value, preparation
-from energy.bomb.cautions import rating_sentence
 from energy.bomb.constants import constants
 from energy.bomb.constants import value as constant
 from energy.bomb.corrections import SOOT_REASON, Budget, aid_share
 from energy.bomb.drift import Flags, Floats
 from energy.bomb.heat_capacity import Calibration
 from energy.bomb.preparation import day_warning
+from energy.bomb.rating import rating_sentence
 from energy.bomb.rise import Rise
 from energy.bomb.runs import KINDS, OUTCOME_COLUMNS, RUN_STATUS, RunSheet
 from energy.problems import Problem, WrongUse

@@ -9,13 +9,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from energy.bomb import corrections, heat_capacity
-from energy.bomb.cautions import over_rating, run_energy
 from energy.bomb.constants import value as constant
 from energy.bomb.corrections import SULFUR_REASON, Budget, Term
 from energy.bomb.drift import Floats
 from energy.bomb.heat_capacity import Calibration
 from energy.bomb.outcome import BIT, LACKS, Reduction
 from energy.bomb.periods import periods
+from energy.bomb.rating import over_rating, run_energy
 from energy.bomb.rise import BIT as RISE_BIT
 from energy.bomb.rise import METHODS, Rise, corrected_rise
 from energy.bomb.runs import KINDS, RUN_STATUS, RunSheet, read_runs

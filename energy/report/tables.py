@@ -35,8 +35,8 @@ def save(assessment: Assessment, path: str | Path) -> list[Path]:
     ending = goal.suffix.lower()
     if ending == ".csv":
         beside = goal.with_name(f"{goal.stem}_verdicts.csv")
-        _whole(goal, lambda p: _text_safe(assessment.results).to_csv(p, index=False))
-        _whole(beside, lambda p: _text_safe(assessment.verdicts).to_csv(p, index=False))
+        whole(goal, lambda p: _text_safe(assessment.results).to_csv(p, index=False))
+        whole(beside, lambda p: _text_safe(assessment.verdicts).to_csv(p, index=False))
         return [goal, beside]
     writers: dict[str, Callable[[Path], None]] = {
         ".xlsx": lambda p: _workbook(assessment, p),
@@ -44,7 +44,7 @@ def save(assessment: Assessment, path: str | Path) -> list[Path]:
         ".json": lambda p: _json(assessment, p),
         ".html": lambda p: _document(assessment, p),
     }
-    _whole(goal, writers[ending])
+    whole(goal, writers[ending])
     return [goal]
 
 
@@ -76,7 +76,7 @@ class Joined:
         return joined.drop_duplicates() if name == "sources" else joined
 
 
-def _whole(goal: Path, write: Callable[[Path], None]) -> None:
+def whole(goal: Path, write: Callable[[Path], None]) -> None:
     """Write beside the goal and move into place, so that nobody meets half a file."""
     handle, name = tempfile.mkstemp(dir=goal.parent, prefix=f".{goal.stem}-", suffix=goal.suffix)
     os.close(handle)
@@ -107,12 +107,17 @@ def problem_table(assessment: Assessment) -> pd.DataFrame:
 
 
 def _workbook(assessment: Assessment, path: Path) -> None:
+    sheets = {"verdicts": assessment.verdicts, "results": assessment.results, "inputs": assessment.inputs(), "problems": problem_table(assessment),
+              "sources": assessment.sources, "balances": assessment.balances}  # fmt: skip
+    workbook(sheets, path)
+
+
+def workbook(sheets: dict[str, pd.DataFrame], path: Path) -> None:
+    """Tables as the sheets of one workbook: numbers as numbers, texts as texts, nothing as a formula."""
     import xlsxwriter
 
     options = {"constant_memory": True, "strings_to_formulas": False, "strings_to_urls": False, "strings_to_numbers": False,
                "nan_inf_to_errors": True}  # fmt: skip
-    sheets = {"verdicts": assessment.verdicts, "results": assessment.results, "inputs": assessment.inputs(), "problems": problem_table(assessment),
-              "sources": assessment.sources, "balances": assessment.balances}  # fmt: skip
     with xlsxwriter.Workbook(path, options) as book:
         head = book.add_format({"bold": True, "bottom": 1})
         for name, frame in sheets.items():
