@@ -1,7 +1,7 @@
 """Replicates of a table judged while it is read: what value they give, and which lie too far apart (ISO 5725-6).
 
-The limit is r = 2.8 s_r with s_r pooled over the batch, relative to each sample's mean, where that has ten degrees of
-freedom or more; else the published limit of the quantity in catalogue/duplicate_limits.csv; else nothing is judged.
+The limit is r = 2.8 s_r with s_r pooled over the batch, relative to each sample's mean and without outliers, where that
+has ten degrees of freedom or more and most samples scatter at all; else the published limit of the quantity in catalogue/duplicate_limits.csv; else nothing is judged.
 """
 
 from __future__ import annotations
@@ -26,7 +26,7 @@ from energy.replicates import (
     accept,
     cochran_of_batch,
     critical_factor,
-    pooled_sd,
+    pooled_sd_of_alike,
 )
 from energy.uncertainty import NEEDED_FREEDOM
 
@@ -91,7 +91,8 @@ def judge(entry: Quantity, values: Floats, censored: NDArray[np.bool_] | None, u
     s_r, why = _repeatability(entry, known)
     accepted = accept(v, s_r if censored is None else np.where(censored, np.nan, s_r))
     scale = 1 / DISPLAY_SCALE[entry.dimension]
-    test = cochran_of_batch(known, relative=True) if (accepted.n >= 2).sum() >= COCHRAN_NEEDS else None
+    repeated = known[accepted.n >= 2]
+    test = cochran_of_batch(known, relative=True) if len(repeated) >= COCHRAN_NEEDS and _scatters(repeated) else None
     outlier = test[0] if test and test[0].judged == "outlier" else None
     findings = []
     for i in np.flatnonzero(accepted.too_far_apart).tolist():
@@ -114,9 +115,10 @@ def _repeatability(entry: Quantity, known: Floats) -> tuple[Floats, Callable[[in
     count = np.isfinite(known).sum(axis=1)
     mean = np.nansum(known, axis=1) / np.maximum(count, 1)
     usable = np.where((count >= 2) & (mean > 0), 1.0, np.nan)
-    relative, freedom = pooled_sd(known * usable[:, None], relative=True)
-    if freedom >= NEEDED_FREEDOM:
+    relative, freedom, wild = pooled_sd_of_alike(known * usable[:, None], relative=True)
+    if freedom >= NEEDED_FREEDOM and _scatters(known[count >= 2]):
         words = f"s_r is {relative:.2%} of the mean, pooled over this batch with {freedom} degrees of freedom"
+        words += f", {len(wild)} of its samples left out as outliers" if len(wild) else ""
         return relative * mean * usable, lambda i: words
     s_r, source = np.full(len(mean), np.nan), np.zeros(len(mean), dtype=np.intp)
     limits = published_limits().get(entry.name, ())
@@ -125,6 +127,15 @@ def _repeatability(entry: Quantity, known: Floats) -> tuple[Floats, Callable[[in
         s_r[rows] = np.maximum(limit.absolute, limit.relative * mean[rows]) / critical_factor(2)
         source[rows] = k
     return s_r, lambda i: limits[source[i]].words
+
+
+def _scatters(replicates: Floats) -> bool:
+    """Most samples show some scatter; where rounding hides it a pooled s_r would call every last digit too much."""
+    replicates = replicates[np.isfinite(replicates).sum(axis=1) >= 2]
+    if not len(replicates):
+        return False
+    spread = np.nanmax(replicates, axis=1) - np.nanmin(replicates, axis=1)
+    return bool(np.median(spread) > 0)
 
 
 def _list(values: Floats) -> str:

@@ -283,6 +283,13 @@ def _draws(model: Model, inputs: Inputs, generator: np.random.Generator, n: int)
     return np.asarray(model(values), dtype=float)
 
 
+def effective_freedom(contributions: ArrayLike, freedom: ArrayLike) -> float:
+    """Degrees of freedom of a combined u, by Welch and Satterthwaite (JCGM 100, G.4.1). (d,) parts of u, their freedom."""
+    parts, nu = np.asarray(contributions, dtype=float), np.asarray(freedom, dtype=float)
+    below = float((parts**4 / nu).sum())
+    return float((parts**2).sum() ** 2 / below) if below > 0 else np.inf
+
+
 def first_order(model: Model, inputs: Inputs) -> tuple[Floats, Floats]:
     """(m,) results at the expectations and their (m, m) covariance, by slopes (JCGM 100, 5.1.2 and H.2).
 

@@ -34,19 +34,51 @@ JUDGED = ("none", "straggler", "outlier")
 def pooled_sd(values: ArrayLike, relative: bool = False) -> tuple[float, int]:
     """Standard deviation within samples and its degrees of freedom: root of the mean of the variances (ISO 5725-2).
 
-    values : (samples, replicates). relative : deviations as shares of each sample's mean, for a batch that spans levels.
-    (nan, 0) where no sample has two values.
+    values : (samples, replicates). relative : deviations as shares of each sample's mean, for a batch that spans levels;
+    samples with a mean of zero are left out. (nan, 0) where no sample has two values.
     """
+    squares, freedom = _squares(values, relative)
+    total = int(freedom.sum())
+    return (float(np.sqrt(squares.sum() / total)), total) if total else (np.nan, 0)
+
+
+def pooled_sd_of_alike(values: ArrayLike, relative: bool = False) -> tuple[float, int, NDArray[np.intp]]:
+    """The same without samples whose replicates scatter as an outlier, as ISO 5725-2 pools; and their indices.
+
+    An outlier: F of its variance over that of all others beyond the 1 % point shared by all samples, which with equal
+    numbers of replicates is Cochran's test; repeated until none is left. So one mistyped replicate does not set the
+    repeatability of a batch. Nobody is left out where the others do not scatter at all.
+    """
+    squares, freedom = _squares(values, relative)
+    kept = freedom > 0
+    for _ in range(10):
+        total, n, p = float(squares[kept].sum()), float(freedom[kept].sum()), int(kept.sum())
+        others = n - freedom
+        if p < 3:
+            break
+        with np.errstate(divide="ignore", invalid="ignore"):
+            rest = (total - squares) / others
+            ratio = np.where(kept & (rest > 1e-12 * total), squares / np.maximum(freedom, 1) / rest, 0.0)
+        worst = ratio > fdtri(np.maximum(freedom, 1), np.maximum(others, 1), 1 - OUTLIER / p)
+        if not worst.any():
+            break
+        # the largest first: it may hide what the others are, and make them look worse or better than they are
+        kept &= ~(worst & (ratio >= ratio.max() / 4))
+    total = int(freedom[kept].sum())
+    if not total:
+        return np.nan, 0, np.empty(0, dtype=np.intp)
+    return float(np.sqrt(squares[kept].sum() / total)), total, np.flatnonzero((freedom > 0) & ~kept)
+
+
+def _squares(values: ArrayLike, relative: bool) -> tuple[Floats, NDArray[np.intp]]:
+    """(samples,) sums of squared deviations, and their degrees of freedom."""
     v = np.asarray(values, dtype=float)
     count = (~np.isnan(v)).sum(axis=1)
-    use = count >= 2
-    freedom = int((count[use] - 1).sum())
-    if not freedom:
-        return np.nan, 0
-    mean = np.nanmean(v[use], axis=1, keepdims=True)
+    mean = np.nansum(v, axis=1) / np.maximum(count, 1)
+    use = (count >= 2) & ((mean != 0) if relative else True)
     with np.errstate(divide="ignore", invalid="ignore"):
-        away = v[use] / mean - 1 if relative else v[use] - mean
-    return float(np.sqrt(np.nansum(away**2) / freedom)), freedom
+        away = v / mean[:, None] - 1 if relative else v - mean[:, None]
+    return np.where(use, np.nansum(away**2, axis=1), 0.0), np.where(use, count - 1, 0)
 
 
 def repeatability_limit(s_r: float) -> float:

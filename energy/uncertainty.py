@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from energy import replicates
 from energy.samples import U_SOURCES
 
 #: below this many degrees of freedom a pooled standard deviation is not used: a pair of duplicates never sets u
@@ -25,18 +26,14 @@ def mean_of(values: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
 
 
 def pooled_relative_sd(values: np.ndarray) -> tuple[float, int]:
-    """Repeatability as a relative SD pooled over samples with two or more values, and its degrees of freedom.
+    """(r, n) -> repeatability as a relative SD pooled over samples with two or more values, and its degrees of freedom.
 
     Pooled as root of the sum of squared relative deviations over the degrees of freedom (ISO 5725-2, within-cell
-    variance), relative because a batch spans materials of different level.
+    variance), relative because a batch spans materials of different level; samples whose replicates scatter as an outlier
+    are left out, so that one mistyped replicate does not set the u of a batch.
     """
-    mean, count = mean_of(values)
-    use = (count >= 2) & (mean != 0)
-    freedom = int((count[use] - 1).sum())
-    if freedom == 0:
-        return np.nan, 0
-    relative = values[:, use] / mean[use] - 1
-    return float(np.sqrt(np.nansum(relative**2) / freedom)), freedom
+    sd, freedom, _ = replicates.pooled_sd_of_alike(values.T, relative=True)
+    return sd, freedom
 
 
 def of_means(

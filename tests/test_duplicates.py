@@ -27,15 +27,17 @@ def batch(n, half=0.0005, level=18.0):
 
 
 def test_a_wide_pair_is_told_by_sample_and_column(tmp_path):
-    # 20 pairs of relative difference 0.001 and one of 0.02: s_r^2 = (20 x 0.001^2 + 0.02^2) / 42, r = 2.8 s_r = 0.885 %,
-    # on a mean of 20: 0.177 MJ/kg
+    # 20 pairs of relative difference 0.001, s_r = 0.001 / sqrt 2; the wide pair is an outlier and left out of it;
+    # r = 2.8 s_r = 0.198 %, on a mean of 20: 0.0396 MJ/kg
     samples = read(tmp_path, [*batch(20), "odd,19.8,20.2"])
     (problem,) = told(samples)
     assert (problem.sample_id, problem.column, problem.row, problem.severity) == ("odd", "gross_energy", 22, "warning")
-    assert "19.8 and 20.2 MJ/kg lie 0.4 apart, more than the 0.177" in problem.what
-    assert "21 degrees of freedom" in problem.what
+    assert "19.8 and 20.2 MJ/kg lie 0.4 apart, more than the 0.0396" in problem.what
+    assert "20 degrees of freedom, 1 of its samples left out" in problem.what
     assert "twice more" in problem.cure
     assert samples.columns["gross_energy"][-1] == pytest.approx(20.0)
+    # u of the others is theirs: 1.29 % between laboratories, and s_r / sqrt 2 within
+    assert samples.u["gross_energy"][0] == pytest.approx(18 * np.hypot(0.0129, 0.001 / 2), rel=1e-4)
 
 
 def test_cochran_is_named_with_it(tmp_path):
@@ -46,6 +48,11 @@ def test_cochran_is_named_with_it(tmp_path):
 
 def test_even_duplicates_say_nothing(tmp_path):
     assert told(read(tmp_path, batch(20))) == []
+
+
+def test_where_rounding_hides_the_scatter_the_published_limit_holds(tmp_path):
+    # most pairs read alike: the one that differs in the last digit is not too far apart
+    assert told(read(tmp_path, [*(f"s{i},18.00,18.00" for i in range(15)), "x,18.00,18.05"])) == []
 
 
 def test_few_degrees_of_freedom_use_the_published_limit(tmp_path):

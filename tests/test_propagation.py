@@ -12,6 +12,7 @@ from energy.propagation import (
     Rectangular,
     StudentT,
     Triangular,
+    effective_freedom,
     first_order,
     numerical_tolerance,
     propagate,
@@ -36,6 +37,13 @@ def test_end_gauge_by_first_order():
     length, covariance = first_order(gauge, GAUGE)
     assert length[0] == pytest.approx(50_000_838, abs=0.5)
     assert np.sqrt(covariance[0, 0]) == pytest.approx(31.66, abs=0.01)  # printed 32
+
+
+def test_end_gauge_degrees_of_freedom():
+    d = effective_freedom([5.8, 3.9, 6.7], [24, 5, 8])
+    assert d == pytest.approx(25.4, abs=0.3)  # printed from rounded parts
+    assert effective_freedom([25, 9.682, 2.887, 16.599], [18, 25.4, 50, 2]) == pytest.approx(16.75, abs=0.005)
+    assert effective_freedom([1.0, 2.0], [np.inf, np.inf]) == np.inf
 
 
 def test_end_gauge_by_monte_carlo():
@@ -83,9 +91,15 @@ def test_leaving_the_correlation_out_triples_u():
 # ---- H.3: calibration line of a thermometer ---------------------------------------------------------------------------
 
 
+T = [21.521, 22.012, 22.512, 23.003, 23.507, 23.999, 24.513, 25.002, 25.503, 26.010, 26.511]
+B = [-0.171, -0.169, -0.166, -0.159, -0.164, -0.165, -0.156, -0.157, -0.159, -0.161, -0.160]
+
+
 def test_thermometer_correction():
-    line = CorrelatedNormal.of([-0.1712, 0.00218], [[0.0029**2, -0.930 * 0.0029 * 0.00067],
-                                                    [-0.930 * 0.0029 * 0.00067, 0.00067**2]])  # fmt: skip
+    (y2, y1), ((v2, c), (_, v1)) = np.polyfit(np.array(T) - 20, B, 1, cov=True)
+    assert (y1, np.sqrt(v1), y2, np.sqrt(v2)) == pytest.approx((-0.1712, 0.0029, 0.00218, 0.00067), abs=5e-5)
+    assert c / np.sqrt(v1 * v2) == pytest.approx(-0.930, abs=5e-4)
+    line = CorrelatedNormal.of([y1, y2], [[v1, c], [c, v2]])
     value, covariance = first_order(lambda x: x["y1"] + 10 * x["y2"], {("y1", "y2"): line})
     assert value[0] == pytest.approx(-0.1494, abs=5e-5)
     assert np.sqrt(covariance[0, 0]) == pytest.approx(0.0041, abs=5e-5)

@@ -23,6 +23,7 @@ from energy.replicates import (
     grubbs,
     grubbs_critical,
     pooled_sd,
+    pooled_sd_of_alike,
     repeatability_limit,
 )
 
@@ -59,6 +60,32 @@ def test_repeatability_limit_of_a_fuel_standard():
 
 def test_single_values_have_no_scatter():
     assert pooled_sd([[1.0], [2.0]])[1] == 0
+
+
+def test_a_mistyped_replicate_does_not_set_the_repeatability_of_a_batch():
+    # 20 pairs 0.02 apart: s_r = 0.02 / sqrt 2; one pair 18.1 and 1.81
+    pairs = [[18.0 + k, 18.02 + k] for k in range(20)] + [[18.1, 1.81]]
+    s, freedom, wild = pooled_sd_of_alike(pairs)
+    assert (s, freedom) == pytest.approx((0.02 / np.sqrt(2), 20))
+    assert wild.tolist() == [20]
+
+
+def test_leaving_out_is_cochrans_test_where_numbers_are_equal():
+    # variances of pairs 1 except one: C = v / (v + 9) for 10 pairs, critical at 1 % cochran_critical(0.01, 2, 10)
+    critical = cochran_critical(0.01, 2, 10)
+    v = 9 * critical / (1 - critical)
+    for factor, left_out in ((0.99, []), (1.01, [9])):
+        pairs = [[0.0, np.sqrt(2)]] * 9 + [[0.0, np.sqrt(2 * factor * v)]]
+        assert pooled_sd_of_alike(pairs)[2].tolist() == left_out
+
+
+def test_two_wild_pairs_do_not_hide_each_other():
+    pairs = [[5.0, 5.1 + 0.01 * k] for k in range(30)] + [[5.0, 50.0], [5.0, 9.0]]
+    assert pooled_sd_of_alike(pairs)[2].tolist() == [30, 31]
+
+
+def test_nobody_is_left_out_of_equal_replicates():
+    assert pooled_sd_of_alike([[1.0, 1.0]] * 12 + [[1.0, 1.1]])[2].tolist() == []
 
 
 # ---- components of variance ----------------------------------------------------------------------------------------
