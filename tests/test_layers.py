@@ -67,6 +67,7 @@ LAYERS = [
         "energy.pages.bench",
         "energy.pages.sample",
         "energy.pages.equations",
+        "energy.pages.bomb_drawing",
         "energy.pages.bomb_runs",
         "energy.pages.calorimeter",
         "energy.pages.declared",

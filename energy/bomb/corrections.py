@@ -10,7 +10,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import ArrayLike
+from numpy.typing import ArrayLike, NDArray
 
 from energy.bomb.constants import CALORIE, constants, ignition_materials, in_joule
 from energy.bomb.constants import value as constant
@@ -54,7 +54,16 @@ def _array(value: ArrayLike | None, n: int, empty: float = 0.0) -> Floats:
     if value is None:
         return np.full(n, empty)
     given = np.broadcast_to(np.asarray(value, dtype=float), n)
-    return np.where(np.isnan(given), empty, given)
+    holes = np.isnan(given)
+    return np.where(holes, empty, given) if holes.any() else given
+
+
+def _or(given: ArrayLike | None, default: Floats) -> Floats:
+    """What was given, the default where nothing was."""
+    if given is None:
+        return default
+    wanted = np.broadcast_to(np.asarray(given, dtype=float), default.shape)
+    return np.where(np.isnan(wanted), default, wanted)
 
 
 def ignition(
@@ -71,23 +80,29 @@ def ignition(
     per gram where a length is given and the reverse.
     """
     total = _array(heat, n)
-    names = np.broadcast_to(np.asarray("" if material is None else material, dtype=object), n)
-    burnt, long = _array(mass, n), _array(length, n)
-    for name in sorted({str(m) for m, b, c in zip(names, burnt, long, strict=True) if b or c}):
-        if name not in ignition_materials():
-            raise WrongUse(f"The ignition material '{name}' is not known.", f"One of: {', '.join(ignition_materials())};"
-                           " or give the heat itself.")  # fmt: skip
-        here = names == name
-        by_length = constants()[name].unit.endswith("/cm")
-        amount = long if by_length else burnt
-        other = burnt if by_length else long
-        if (other[here] != 0).any():
-            raise WrongUse(f"The constant of '{name}' is per {'cm' if by_length else 'g'}.",
-                           f"Give the {'length' if by_length else 'mass'} burnt, or choose another material.")  # fmt: skip
-        total = np.where(here, total + in_joule(name) * amount, total)
+    if mass is not None or length is not None:
+        names = np.broadcast_to(np.asarray("" if material is None else material, dtype=object), n)
+        burnt, long = _array(mass, n), _array(length, n)
+        used = np.flatnonzero((burnt != 0) | (long != 0))
+        for name in sorted({str(m) for m in names[used]}):
+            total = _of_material(name, used[names[used] == name], burnt, long, total)
     spread = constant("u_ignition") * np.abs(total)
-    given = _array(u, n, np.nan)
-    return Term("ignition", "ignition (wire, thread, current)", total, np.where(np.isnan(given), spread, given))
+    return Term("ignition", "ignition (wire, thread, current)", total, _or(u, spread))
+
+
+def _of_material(name: str, rows: NDArray[np.intp], burnt: Floats, long: Floats, total: Floats) -> Floats:
+    """The heats with those of one wire or thread put into its rows."""
+    if name not in ignition_materials():
+        raise WrongUse(f"The ignition material '{name}' is not known.", f"One of: {', '.join(ignition_materials())};"
+                       " or give the heat itself.")  # fmt: skip
+    by_length = constants()[name].unit.endswith("/cm")
+    amount, other = (long, burnt) if by_length else (burnt, long)
+    if (other[rows] != 0).any():
+        raise WrongUse(f"The constant of '{name}' is per {'cm' if by_length else 'g'}.",
+                       f"Give the {'length' if by_length else 'mass'} burnt, or choose another material.")  # fmt: skip
+    out = total.copy()
+    out[rows] += in_joule(name) * amount[rows]
+    return out
 
 
 def nitric_acid_titrated(
@@ -107,7 +122,7 @@ def nitric_acid_titrated(
     )
     heat = v * c * per_mmol
     each = constant("u_acid_volume") if u_volume is None else u_volume
-    return heat, np.hypot(each * c * per_mmol, heat * entry.u / entry.value)
+    return heat, np.sqrt((each * c * per_mmol) ** 2 + (heat * (entry.u / entry.value)) ** 2)
 
 
 def nitric_acid_share(bomb_heat: ArrayLike) -> Floats:
@@ -141,9 +156,9 @@ def burnt_beside(
 ) -> Term:
     """An aid, capsule or bag: mass [g] times its own heat [J/g], from blanks of the same lot."""
     m, q = _array(mass, n), _array(heat, n)
-    given = _array(u_heat, n, np.nan)
-    relative = np.where(np.isnan(given), constant("u_blank") * np.abs(q), given)
-    return Term(name, title, m * q, np.hypot(m * relative, np.where(m > 0, constant("u_mass") * q, 0.0)))
+    of_blank = m * _or(u_heat, constant("u_blank") * q)
+    weighed = np.where(m > 0, constant("u_mass") * q, 0.0)
+    return Term(name, title, m * q, np.sqrt(of_blank**2 + weighed**2))
 
 
 def soot_heat(carbon: ArrayLike) -> Floats:
@@ -178,9 +193,15 @@ class Budget:
     @property
     def u_per_gram(self) -> Floats:
         """(n,) its standard uncertainty, first order."""
-        squares = self.u_taken_up**2 + sum((t.u**2 for t in self.terms), np.zeros_like(self.taken_up))
+        return self.u_of(self.per_gram)
+
+    def u_of(self, per_gram: Floats) -> Floats:
+        """The same, `per_gram` known already."""
+        squares = self.u_taken_up**2
+        for term in self.terms:
+            squares = squares + term.u**2
         with np.errstate(divide="ignore", invalid="ignore"):
-            return np.hypot(np.sqrt(squares), self.per_gram * self.u_mass) / self.mass
+            return np.sqrt(squares + (per_gram * self.u_mass) ** 2) / self.mass
 
     def rows(self, i: int) -> list[tuple[str, float, float, float, float, str]]:
         """Budget of run i: (item, heat J, u J, J/g, share of what was taken up, note); the heats add up to the last row."""

@@ -40,6 +40,7 @@ def reduce_runs(
     nitric_acid: str = "given",
     repeatability: float | None = None,
     rated_energy: float | None = None,
+    moved: Mapping[str, tuple[float, float]] | None = None,
     units: Mapping[str, str] | None = None,
     decimal: str | None = None,
     name: str | None = None,
@@ -52,7 +53,8 @@ def reduce_runs(
     calibrations : those of another sheet (`calibrate(...).calibrations`). method : rise from thermograms, one of
     rise.METHODS. sulfur : off (food and feed), separate, total_acid. nitric_acid : given (titration or heat in the sheet)
     or share (of the heat, GB/T 213, where the sheet gives none). repeatability : r [J/g] duplicates are judged by.
-    rated_energy : J the vessel is rated for. Raises StructuralProblems, WrongUse.
+    rated_energy : J the vessel is rated for. moved : run id -> (firing, end of the main period) in s, in place of what the
+    sheet says or the tool finds. Raises StructuralProblems, WrongUse.
     """
     sheet = read_runs(runs, thermograms, units, decimal, name, thermograms_name)
     if nitric_acid not in NITRIC_ACID:
@@ -60,6 +62,10 @@ def reduce_runs(
     if method not in METHODS:
         raise WrongUse(f"The method '{method}' is not known.", f"One of: {', '.join(METHODS)}.")
     n = len(sheet)
+    for column, k in (("firing_time", 0), ("main_end", 1)):
+        if moved:
+            times = [moved[str(r)][k] if str(r) in moved else np.nan for r in sheet.text["run_id"]]
+            sheet.number[column] = np.where(np.isnan(times), sheet.values(column), times)
     flags = np.zeros(n, dtype=np.int64)
     told: list[Problem] = []
     rise, u_rise, found = _rises(sheet, method)
@@ -90,12 +96,15 @@ def reduce_runs(
         if nitric_acid == "share":
             terms = _share_of_tests(terms, taken, mass, calibrating)
         part_c = rise * u_capacity
-        u_taken = np.hypot(capacity * u_rise, part_c)
+        u_taken = np.sqrt((capacity * u_rise) ** 2 + part_c**2)
         budget = Budget(taken, u_taken, terms, mass, np.full(n, constant("u_mass")))
-        gross, u, common = budget.per_gram, budget.u_per_gram, part_c / mass
-    beside = sum((t.heat for t in terms), np.zeros(n))
-    expected = sheet.values("expected_energy")
-    energy = run_energy(mass, np.where(np.isnan(expected), np.where(calibrating, heats, gross), expected), beside)
+        gross = budget.per_gram
+        u, common = budget.u_of(gross), part_c / mass
+    energy = taken
+    if "expected_energy" in sheet.number:
+        beside = sum((t.heat for t in terms), np.zeros(n))
+        predicted = run_energy(mass, sheet.number["expected_energy"], beside)
+        energy = np.where(np.isnan(predicted), taken, predicted)
     rated = np.full(n, np.nan if rated_energy is None else rated_energy)
     if "rated_energy" in sheet.number:
         rated = np.where(np.isnan(sheet.number["rated_energy"]), rated, sheet.number["rated_energy"])
@@ -103,8 +112,9 @@ def reduce_runs(
         gross[calibrating], u[calibrating] = np.nan, np.nan
     _flag(sheet, flags, rise, mass, capacity, gross, terms, taken, energy, rated, code, all_of_them, calibrating)
     status = _status(sheet, flags, found)
-    void = ~np.isin(status, (0, 1))
-    gross[void], u[void] = np.nan, np.nan
+    void = status > RUN_STATUS.index("warned")
+    if void.any():
+        gross[void], u[void] = np.nan, np.nan
     notes = _notes(all_of_them, sulfur, terms)
     r = constant("repeatability") if repeatability is None else repeatability
     return Reduction(sheet, rise, u_rise, capacity, u_capacity, mass, budget, gross, u, common, flags, status, code,
@@ -192,20 +202,21 @@ def _terms(sheet: RunSheet, mass: Floats, sulfur: str, calibrating: NDArray[np.b
 def _nitric_acid(sheet: RunSheet) -> Term | None:
     """Titration where given, else the heat given."""
     n, number = len(sheet), sheet.number
+    if not {"nitric_acid_heat", "acid_volume"} & set(number):
+        return None
     heat, u = np.zeros(n), np.zeros(n)
     if "nitric_acid_heat" in number:
         heat = np.nan_to_num(number["nitric_acid_heat"])
         given = sheet.u.get("nitric_acid_heat", np.full(n, np.nan))
         u = np.where(np.isnan(given), constant("u_acid_constant") * heat, given)
     if "acid_volume" in number:
-        strength = sheet.values("acid_concentration")
-        titrated, u_titrated = corrections.nitric_acid_titrated(
-            number["acid_volume"], np.where(np.isnan(strength), 0.1, strength)
-        )
-        has = ~np.isnan(titrated)
-        heat, u = np.where(has, titrated, heat), np.where(has, u_titrated, u)
-    if not {"nitric_acid_heat", "acid_volume"} & set(number):
-        return None
+        strength = number.get("acid_concentration")
+        alkali = 0.1 if strength is None else np.where(np.isnan(strength), 0.1, strength)
+        titrated, u_titrated = corrections.nitric_acid_titrated(number["acid_volume"], alkali)
+        untitrated = np.isnan(titrated)
+        if untitrated.any():
+            titrated, u_titrated = np.where(untitrated, heat, titrated), np.where(untitrated, u, u_titrated)
+        heat, u = titrated, u_titrated
     return Term("nitric_acid", "nitric acid", heat, u)
 
 
@@ -379,23 +390,25 @@ def _flag(
 ) -> None:
     """Set the bits of what is lacking and what is to be told."""
     burnt = ~calibrating
-    food = np.isin(sheet.kind_code, (KINDS.index("test"), KINDS.index("control")))
-    flags[np.isnan(mass)] |= BIT["no_mass"]
-    flags[np.isnan(rise)] |= BIT["no_rise"]
-    flags[np.isnan(capacity) & burnt] |= BIT["no_heat_capacity"]
+    food = (sheet.kind_code == KINDS.index("test")) | (sheet.kind_code == KINDS.index("control"))
+    _mark(flags, np.isnan(mass), "no_mass")
+    _mark(flags, np.isnan(rise), "no_rise")
+    _mark(flags, np.isnan(capacity) & burnt, "no_heat_capacity")
     with np.errstate(invalid="ignore", divide="ignore"):
         beside = [t for t in terms if t.name in ("aid", "capsule", "bag")]
         if beside:
-            flags[corrections.aid_share(terms, taken) > constant("aid_share")] |= BIT["aid_third"]
+            _mark(flags, corrections.aid_share(terms, taken) > constant("aid_share"), "aid_third")
             for term in beside:
-                m, q = (np.nan_to_num(sheet.values(f"{term.name}_{what}")) for what in ("mass", "heat"))
-                flags[(m > 0) != (q > 0)] |= BIT["bag_bare"]
+                m, q = (sheet.values(f"{term.name}_{what}") for what in ("mass", "heat"))
+                _mark(flags, (m > 0) != (q > 0), "bag_bare")
         low, high = dictionary()["gross_energy"].range
-        flags[food & ((gross < low * 1e3) | (gross > high * 1e3))] |= BIT["implausible"]
-        flags[over_rating(energy, rated)] |= BIT["over_rating"]
+        _mark(flags, food & ((gross < low * 1e3) | (gross > high * 1e3)), "implausible")
+        if not np.isnan(rated).all():
+            _mark(flags, over_rating(energy, rated), "over_rating")
         lows, highs = (np.array([getattr(c, a) for c in known] or [np.nan]) for a in ("low", "high"))
-        near, far = np.where(code >= 0, lows[code], np.nan), np.where(code >= 0, highs[code], np.nan)
-        flags[burnt & ((rise < near / FAR) | (rise > far * FAR))] |= BIT["rise_far"]
+        if np.isfinite(lows).any():
+            near, far = np.where(code >= 0, lows[code], np.nan), np.where(code >= 0, highs[code], np.nan)
+            _mark(flags, burnt & ((rise < near / FAR) | (rise > far * FAR)), "rise_far")
     if "pellet_date" in sheet.text and "moisture_date" in sheet.text:
         flags[sheet.days_apart] |= BIT["days_apart"]
     if any(c.counted for c in known):
@@ -405,6 +418,11 @@ def _flag(
             for k in range(len(known)):
                 if there[k] is not None:
                     flags[burnt & (code == k) & (here != there[k])] |= BIT[f"{name}_differs"]
+
+
+def _mark(flags: NDArray[np.int64], where: NDArray[np.bool_], name: str) -> None:
+    if where.any():
+        flags[where] |= BIT[name]
 
 
 def _status(sheet: RunSheet, flags: NDArray[np.int64], found: Rise | None) -> NDArray[np.int8]:

@@ -20,7 +20,7 @@ METHODS = {
     "regnault_pfaundler": "Regnault and Pfaundler: leak proportional to the temperature difference, integral by trapezoids"
     " (end ordinates halved)",
     "dickinson": "Dickinson: both drifts meet where 0.60 of the rise is reached",
-    "dickinson_exponential": "Dickinson with 0.63, the share 1 - 1/e of a rise that is exactly exponential",
+    "dickinson_exponential": "Dickinson with 0.63: the share 1 - 1/e of a rise that is exactly exponential",
     "adiabatic": "adiabatic jacket: the mean of the residual drifts over the main period",
 }
 

@@ -11,10 +11,12 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from energy import __version__
+from energy.assessment import demo_paths
 from energy.bomb.cautions import CAUTIONS
 from energy.bomb.corrections import SULFUR_REASON
 from energy.bomb.outcome import Reduction
-from energy.bomb.runs import KINDS
+from energy.bomb.rise import METHODS
+from energy.bomb.runs import KINDS, template
 from energy.report.tables import check_ending, whole, workbook
 
 if TYPE_CHECKING:
@@ -231,35 +233,36 @@ def budget_line(found: Reduction, run_id: str) -> str:
 def curves(found: Reduction, run_id: str) -> dict[str, pd.DataFrame] | None:
     """What the thermogram is drawn from, None where the run has none.
 
-    readings : minutes, temperature, period; drifts : minutes, temperature, line; bounds : minutes, what; rise : minutes,
-    low, high of the corrected rise.
+    readings : minutes, temperature, period. drifts : minutes, temperature, line. bounds : minutes, what. rise : minutes,
+    low, high, label: the corrected rise, drawn where the two drift lines lie exactly that far apart.
     """
     import pandas as pd
 
     place = found.record_of(found.row_of(run_id))
     records, rise = found.sheet.records, found.thermograms
-    if place is None or records is None or rise is None:
+    if place is None or records is None or rise is None or not np.isfinite(rise.value[place]):
         return None
     count = int(records.count[place])
     t, temp = records.time[place, :count] / 60, records.temperature[place, :count]
-    bounds = [float(b[place]) / 60 for b in (rise.periods.fore_start, rise.periods.ignition, rise.periods.main_end,
-                                            rise.periods.after_end)]  # fmt: skip
-    period = np.where(t <= bounds[1], "fore", np.where(t < bounds[2], "main", "after"))
-    middle = (bounds[1] + bounds[2]) / 2
-    ends = {"drift before": (bounds[0], middle), "drift after": (middle, bounds[3])}
-    lines = []
-    for (name, span), drift in zip(ends.items(), (rise.fore, rise.after), strict=True):
-        for m in span:
-            height = drift.temperature[place] + drift.rate[place] * (m * 60 - drift.time[place])
-            lines.append((m, float(height), name))
-    high = next(y for x, y, name in lines if name == "drift after" and x == middle)
+    start, lit, end, stop = (float(b[place]) / 60 for b in (rise.periods.fore_start, rise.periods.ignition,
+                                                            rise.periods.main_end, rise.periods.after_end))  # fmt: skip
+    slopes = [float(d.rate[place]) * 60 for d in (rise.fore, rise.after)]
+    heights = [float(d.temperature[place] - d.rate[place] * d.time[place]) for d in (rise.fore, rise.after)]
     value = float(rise.value[place])
+    with np.errstate(divide="ignore", invalid="ignore"):
+        meet = (heights[1] - heights[0] - value) / np.float64(slopes[0] - slopes[1])
+    at = float(np.clip(meet, lit, end)) if np.isfinite(meet) else (lit + end) / 2
+    spans = {"drift before firing": (start, max(at, lit)), "drift after": (min(at, end), stop)}
+    lines = [(m, heights[k] + slopes[k] * m, name) for k, (name, span) in enumerate(spans.items()) for m in span]
+    high = heights[1] + slopes[1] * at
+    period = np.where(t <= lit, "fore period", np.where(t < end, "main period", "after period"))
     return {
         "readings": pd.DataFrame({"minutes": t, "temperature": temp, "period": period}),
         "drifts": pd.DataFrame(lines, columns=["minutes", "temperature", "line"]),
-        "bounds": pd.DataFrame({"minutes": bounds[1:3], "what": ["firing", "end of the main period"]}),
-        "rise": pd.DataFrame({"minutes": [middle], "high": [high], "low": [high - value], "label": [f"{value:.4f} K"]}),
-    }
+        "bounds": pd.DataFrame({"minutes": [lit, end], "what": ["firing", "end of the main period"]}),
+        "rise": pd.DataFrame({"minutes": [at], "high": [high], "low": [high - value], "middle": [high - value / 2],
+                              "label": [f"corrected rise {value:.4f} K"]}),
+    }  # fmt: skip
 
 
 def rise_rows(found: Reduction, run_id: str) -> pd.DataFrame:
@@ -302,6 +305,56 @@ def period_bounds(found: Reduction, run_id: str) -> tuple[float, float, float, f
     return first, lit, end, last
 
 
-def moved(found: Reduction, run_id: str, firing: float, main_end: float) -> dict[str, tuple[float, float]]:
-    """The periods of a run in seconds, as the sheet takes them."""
-    return {run_id: (firing * 60, main_end * 60)}
+def seconds(minutes: tuple[float, float]) -> tuple[float, float]:
+    """Firing and end of the main period, as reduce_runs takes them."""
+    return minutes[0] * 60, minutes[1] * 60
+
+
+def joule(kilojoule: float | None) -> float | None:
+    """A rating typed in kJ."""
+    return None if not kilojoule else kilojoule * 1e3
+
+
+def demo() -> tuple[bytes, bytes]:
+    """The invented run sheet and its thermograms."""
+    folder = demo_paths()[0].parent
+    return (folder / "bomb_runs.csv").read_bytes(), (folder / "bomb_thermograms.csv").read_bytes()
+
+
+def sample_csv(found: Reduction) -> bytes:
+    """The samples as a sample table to load elsewhere."""
+    return _text_safe(found.sample_table).to_csv(index=False).encode("utf-8")
+
+
+def counts(found: Reduction) -> str:
+    """What became of the runs, in a line."""
+    number = found.runs["status"].value_counts()
+    words = {"ok": "count", "warned": "count with a remark", "rejected": "rejected", "problem": "not computed"}
+    return f"{len(found)} runs: " + ", ".join(f"{number[s]} {w}" for s, w in words.items() if s in number)
+
+
+def empty_sheet() -> str:
+    """The header line of an empty run sheet."""
+    return template() + "\n"
+
+
+def method_name(method: str) -> str:
+    """A method as a choice."""
+    return METHODS[method].split(":")[0]
+
+
+def sulfur_name(convention: str) -> str:
+    """A sulfur convention as a choice."""
+    return {"off": "off (food and feed)", "separate": "nitric acid found separately", "total_acid":
+            "all acid booked as nitric"}[convention]  # fmt: skip
+
+
+def run_title(found: Reduction, run_id: str) -> str:
+    """A run as a choice: its id, what was burnt, what became of it."""
+    row = found.runs.iloc[found.row_of(run_id)]
+    return f"{run_id}  {row['sample_id']}  {STATUS_WORDS[row['status']]}"
+
+
+def remarks(found: Reduction, run_id: str) -> list[str]:
+    """What is to be said of a run."""
+    return found.sentences(found.row_of(run_id))
