@@ -2,7 +2,8 @@
 
 Gross energy is not less than digestible, digestible not less than metabolizable, metabolizable not less than net
 energy; a digestibility is not over 100 %; methane over 15 % of gross energy is beyond what ruminants lose (6 to 7 %,
-IPCC 2019 Table 10.12). A balance of nitrogen may be negative: AMEn above AME is possible and is left alone.
+IPCC 2019 Table 10.12). A balance of nitrogen may be negative: AMEn above AME is possible and is left alone. A figure is
+judged against the gross energy of its own route, so that a wrong bomb value does not accuse the composition.
 """
 
 from __future__ import annotations
@@ -26,8 +27,12 @@ MOST_METHANE = 0.15
 MEASURED = (
     ("gross_energy", 0, "gross energy"), ("digestible_energy", 1, "digestible energy"),
     ("metabolizable_energy", 2, "metabolizable energy"),
-    ("apparent_metabolizable_energy", 2, "apparent metabolizable energy"), ("net_energy", 3, "net energy"),
+    ("apparent_metabolizable_energy", 2, "apparent metabolizable energy"),
+    ("apparent_metabolizable_energy_n_corrected", 2, "nitrogen-corrected apparent metabolizable energy"),
+    ("net_energy", 3, "net energy"),
 )  # fmt: skip
+#: columns of a trial beside the amounts, heats and excreta of one: given for nothing where no figure uses them
+OF_A_TRIAL = ("nitrogen_retained", "marker_in_feed", "energy_digestibility")
 #: (part, whole): the digestible part of a constituent is not more than the constituent
 PARTS = (
     ("digestible_crude_protein", "crude_protein"), ("digestible_crude_fat", "crude_fat"),
@@ -59,11 +64,14 @@ def find(samples: Samples, systems: Sequence[System], blocks: Blocks, catalogue:
     found = Findings()
     given = _given(samples)
     _check_given(samples, given, found)
+    _unused(samples, systems, catalogue, found)
     computed = blocks.value[blocks.row(blocks.pairs[0].heats)]
-    gross = np.where(np.isnan(given.get("gross_energy", computed)), computed, given.get("gross_energy", computed))
+    measured = given.get("gross_energy", computed)
+    measured = np.where(np.isnan(measured), computed, measured)
     for i, system in enumerate(systems):
         texts = np.full(len(samples), "", dtype=object)
         value = blocks.value[i]
+        gross = computed if _by_composition(system) else measured
         if system.stage == "digestibility":
             _say(texts, value > ROOM, value, 100, "impossible: a digestibility of {0:.1f} %, over 100 %")
         if system.stage == "CH4E":
@@ -96,10 +104,37 @@ def _between(samples: Samples, system: System, catalogue: Mapping[str, System]) 
     found = []
     for count in range(1, len(system.steps)):
         step = catalogue[system.steps[count - 1]]
-        if step.stage in ("DE", "ME"):
+        if step.stage in ("DE", "ME") and RANK[step.stage] < RANK.get(system.stage, 0):
             part = up_to(system, count, catalogue)
             found.append((part, evaluate(samples, [part]).value[0]))
     return found
+
+
+def _by_composition(system: System) -> bool:
+    """True for a figure that no bomb value enters."""
+    return system.route == "composition" and all(s.quantity != "gross_energy" for s in system.inputs.values())
+
+
+def _unused(samples: Samples, systems: Sequence[System], catalogue: Mapping[str, System], found: Findings) -> None:
+    """Columns of a trial that no figure computed here uses: told, with what would."""
+    used = {s.quantity for system in systems for s in system.inputs.values()}
+    species = set.intersection(*(set(system.targets) for system in systems)) if systems else set()
+    species = {samples.target} if samples.target in species else species
+    for name in samples.columns:
+        known = dictionary()[name]
+        of_a_trial = known.own_matter or known.dimension in ("mass", "heat") or name in OF_A_TRIAL
+        if not of_a_trial or name in used or np.isnan(samples.columns[name]).all():
+            continue
+        others = [s.id for s in catalogue.values() if species & set(s.targets)
+                  and any(x.quantity == name for x in s.inputs.values())]  # fmt: skip
+        what = f"{known.title} is given, but no figure computed here for {_named(species)} uses it."
+        cure = (f"With all systems (--systems all) it is used by {', '.join(others[:3])}, where the rest of the trial is given."
+                if others else "The catalogue has no system for this species that does; nothing to mend.")  # fmt: skip
+        found.problems.append(Problem(what, cure, samples.source, None, name, None, "warning"))
+
+
+def _named(species: set[str]) -> str:
+    return " or ".join(sorted(x.replace("_", " ") for x in species))
 
 
 def _against(texts: np.ndarray, value: np.ndarray, system: System, above: np.ndarray, words: str) -> None:

@@ -24,6 +24,7 @@ def told(a, word):
         ({"DE [MJ/kg DM]": 19.0}, "digestible energy, of a trial of 16.72 MJ/kg is more than gross energy"),
         ({"DE [MJ/kg DM]": 12.0, "ME [MJ/kg DM]": 12.5}, "metabolizable energy of 11 MJ/kg is more than digestible"),
         ({"ME [MJ/kg DM]": 10.0, "net energy [MJ/kg DM]": 10.5}, "net energy of 9.24 MJ/kg is more than metabolizable"),
+        ({"AMEn [MJ/kg DM]": 18.5}, "nitrogen-corrected apparent metabolizable energy, of a trial of 16.28 MJ/kg is more than gross"),
         ({"methane energy [MJ/kg DM]": 3.0}, "energy in methane is 16.5 % of gross energy, over 15 %"),
         ({"faecal energy [MJ/kg DM]": 18.9}, "energy in faeces is 103.8 % of gross energy"),
         ({"energy digestibility [%]": 104.0}, "digestibility of energy of 104 % is impossible"),
@@ -95,3 +96,41 @@ def test_the_gross_energy_computed_stands_in_where_none_is_measured():
 def test_people_are_told_by_the_verdict_instead():
     samples = energy.read_samples(pd.DataFrame([{"sample_id": "s", **PLAIN}]), target="none")
     assert energy.assess(samples).problems == []
+
+
+TRIAL = {"feed intake [kg DM]": 1.0, "excreta output [kg DM]": 0.45, "gross energy of excreta [MJ/kg DM]": 17.0}
+
+
+@pytest.mark.parametrize("target", ["poultry", "duck"])
+def test_nitrogen_that_is_lost_puts_amen_above_ame_without_reproach(target):
+    """18.2 - 0.45 x 17 = 10.55; 8.14 g N lost per kg at 34.39 kJ/g add 0.27994 MJ (Shu et al. 2018: force-fed ducks)."""
+    a = assess(target, "default", **TRIAL, **{"nitrogen retained [g/kg DM]": -8.14})
+    row = a.results.set_index("system").loc["trial_chain_amen_total"]
+    assert row["value"] == pytest.approx(10.55 + 8.14 * 0.03439)
+    assert row["status"] == "ok"
+    assert told(a, "impossible") == []
+
+
+def test_a_wrong_bomb_value_does_not_accuse_the_composition():
+    """1.65 instead of 16.5 MJ/kg: the composition still gives some 18 MJ GE and 14 MJ DE per kg of dry matter."""
+    more = {"NDF [g/kg DM]": 180.0, "ADF [g/kg DM]": 60.0, "starch [g/kg DM]": 450.0, "gross energy [MJ/kg DM]": 1.82,
+            "crude fibre [g/kg DM]": 50.0}  # fmt: skip
+    found = assess("growing_pig", "default", **more).results.set_index("system")
+    assert found.loc["noblet_perez_1993_de_ndf", "status"] == "ok"
+    assert found.loc["noblet_perez_1993_de_ge_ndf", "status"] == "implausible"
+
+
+def test_columns_of_a_trial_that_nothing_uses_are_told():
+    a = assess("growing_pig", "default", **TRIAL)
+    assert len(told(a, "is given, but no figure computed here for growing pig")) == 3
+
+
+def test_what_would_use_an_unused_column_is_named():
+    a = assess("growing_pig", "default", **{"energy digestibility [%]": 82.0})
+    (problem,) = [p for p in a.problems if p.column == "energy_digestibility"]
+    assert "ge_times_measured_digestibility" in problem.cure
+
+
+def test_columns_of_a_trial_that_are_used_are_not_told():
+    a = assess("poultry", "default", **TRIAL, **{"nitrogen retained [g/kg DM]": 9.0})
+    assert told(a, "is given, but no figure") == []
