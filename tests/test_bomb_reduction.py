@@ -95,6 +95,13 @@ def test_the_budget_of_a_run_adds_up():
         assert table["j_per_g"].iloc[-1] == pytest.approx(ge * 1e3)
 
 
+def test_the_budget_of_a_calibration_adds_up_to_what_was_taken_up():
+    # by hand: 1.0 g at 26454 J/g and 50 J of ignition
+    found = energy.reduce_runs(sheet(CALIBRATION, HEAD), name="r.csv")
+    table = found.budget("K0")
+    assert table["heat_j"].tolist() == pytest.approx([26_454, 50, 26_504])
+
+
 def test_sulfur_is_off_with_its_reason_and_on_when_asked_for():
     head = "run_id,sample_id,kind,sample_mass [g],rise [K],sulfur [%]"
     off, on = reduced("1,a,test,1,2,2\n", head), reduced("1,a,test,1,2,2\n", head, sulfur="separate")

@@ -205,13 +205,27 @@ class Budget:
 
     def rows(self, i: int) -> list[tuple[str, float, float, float, float, str]]:
         """Budget of run i: (item, heat J, u J, J/g, share of what was taken up, note); the heats add up to the last row."""
+        lines = [("taken up: heat capacity × rise", float(self.taken_up[i]), float(self.u_taken_up[i]), "")]
+        lines += [(t.title, -h, u, t.note) for t, h, u in self._heats(i)]
+        heat, u = float(self.sample_heat[i]), float(self.u_per_gram[i] * self.mass[i])
+        return self._shared(i, [*lines, ("heat of the sample", heat, u, "")])
+
+    def calibration_rows(self, i: int) -> list[tuple[str, float, float, float, float, str]]:
+        """The same of a calibration run: its known heats add up to what the calorimeter took up."""
+        heat = float(self.sample_heat[i])
+        lines = [("calibrant: mass × its heat", heat, abs(heat / float(self.mass[i]) * float(self.u_mass[i])), "")]
+        lines += [(t.title, h, u, t.note) for t, h, u in self._heats(i)]
+        total = float(np.sqrt(sum(line[2] ** 2 for line in lines)))
+        return self._shared(i, [*lines, ("taken up: heat capacity × rise", float(self.taken_up[i]), total, "")])
+
+    def _heats(self, i: int) -> list[tuple[Term, float, float]]:
+        return [(t, float(t.heat[i]), float(t.u[i])) for t in self.terms if t.heat[i] != 0]
+
+    def _shared(
+        self, i: int, lines: list[tuple[str, float, float, str]]
+    ) -> list[tuple[str, float, float, float, float, str]]:
         total, mass = float(self.taken_up[i]), float(self.mass[i])
-        lines = [("taken up: heat capacity x rise", total, float(self.u_taken_up[i]), "")]
-        lines += [(t.title, -float(t.heat[i]), float(t.u[i]), t.note) for t in self.terms
-                  if t.heat[i] != 0 or t.note == SULFUR_REASON]  # fmt: skip
-        heat, u = float(self.sample_heat[i]), float(self.u_per_gram[i]) * mass
-        lines.append(("heat of the sample", heat, u, ""))
-        return [(item, joule, spread, joule / mass, joule / total, note) for item, joule, spread, note in lines]
+        return [(item, joule, u, joule / mass, joule / total, note) for item, joule, u, note in lines]
 
 
 def aid_share(terms: Sequence[Term], taken_up: Floats) -> Floats:

@@ -163,7 +163,12 @@ class Reduction:
         import pandas as pd
 
         columns = ["item", "heat_j", "u_j", "j_per_g", "share", "note"]
-        return pd.DataFrame(self.budgets.rows(self.row_of(run_id)), columns=columns)
+        return pd.DataFrame(self.budget_rows(self.row_of(run_id)), columns=columns)
+
+    def budget_rows(self, i: int) -> list[tuple[str, float, float, float, float, str]]:
+        """The budget of run i by its kind."""
+        calibrating = self.sheet.kind_code[i] == KINDS.index("calibration")
+        return self.budgets.calibration_rows(i) if calibrating else self.budgets.rows(i)
 
     # ---- samples ---------------------------------------------------------------------------------------------------
 

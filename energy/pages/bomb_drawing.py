@@ -50,8 +50,8 @@ def thermogram(curves: dict[str, pd.DataFrame]) -> alt.LayerChart:
     )
     named = (
         alt.Chart(curves["bounds"])
-        .mark_text(angle=270, align="right", baseline="bottom", dx=-6, dy=-3, color=INK, fontSize=12)
-        .encode(x="minutes:Q", y=alt.value(0), text="what:N")
+        .mark_text(angle=270, align="center", baseline="bottom", dy=-3, color=INK, fontSize=12)
+        .encode(x="minutes:Q", y="temperature:Q", text="what:N")
     )
     bar = (
         alt.Chart(curves["rise"])
@@ -61,6 +61,6 @@ def thermogram(curves: dict[str, pd.DataFrame]) -> alt.LayerChart:
     label = (
         alt.Chart(curves["rise"])
         .mark_text(align="left", dx=10, color=INK, fontSize=14, fontWeight="bold")
-        .encode(x="minutes:Q", y=alt.Y("middle:Q"), text="label:N")
+        .encode(x="minutes:Q", y=alt.Y("written:Q"), text="label:N")
     )
     return alt.LayerChart(layer=[bounds, *drifts, readings, bar, label, named]).properties(height=420)

@@ -129,6 +129,10 @@ def samples(found: Reduction) -> None:
         st.dataframe(bench_work.sample_rows(found), hide_index=True, width="stretch")
         st.caption(bench_work.ABOUT_U)
         st.download_button("Sample table (CSV)", bench_work.sample_csv(found), "gross_energy.csv", "text/csv")
+    look = bench_work.to_look_at(found)
+    if len(look):
+        st.subheader("To look at", anchor=False)
+        st.table(screen.safe(look), hide_index=True)
     if found.calibrations:
         st.subheader("Heat capacity", anchor=False)
         st.table(screen.safe(bench_work.calibration_rows(found)), hide_index=True)

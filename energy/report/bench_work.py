@@ -13,7 +13,6 @@ import numpy as np
 from energy import __version__
 from energy.assessment import demo_paths
 from energy.bomb.cautions import CAUTIONS
-from energy.bomb.corrections import SULFUR_REASON
 from energy.bomb.outcome import Reduction
 from energy.bomb.rise import METHODS
 from energy.bomb.runs import KINDS, template
@@ -42,7 +41,7 @@ def budgets(found: Reduction) -> pd.DataFrame:
     """The correction budgets of all runs, one below the other."""
     import pandas as pd
 
-    rows = [(run, *line) for i, run in enumerate(found.sheet.text["run_id"]) for line in found.budgets.rows(i)]
+    rows = [(run, *line) for i, run in enumerate(found.sheet.text["run_id"]) for line in found.budget_rows(i)]
     return pd.DataFrame(rows, columns=["run_id", "item", "heat_j", "u_j", "j_per_g", "share", "note"])
 
 
@@ -178,7 +177,7 @@ def run_rows(found: Reduction) -> pd.DataFrame:
         "run": t["run_id"], "sample": t["sample_id"], "kind": t["kind"], "": [STATUS_WORDS[s] for s in t["status"]],
         "corrected rise, K": [_n(v, 4) for v in t["rise"]], "heat capacity, J/K": [_n(v, 1) for v in t["heat_capacity"]],
         "gross energy as burnt, MJ/kg": [_n(v, 3) for v in t["gross_energy"]], "u": [_n(v, 3) for v in t["u"]],
-        "why": t["reason"],
+        "operator": t["operator"], "date": t["date"], "batch": t["batch"],
     })  # fmt: skip
 
 
@@ -192,7 +191,6 @@ def sample_rows(found: Reduction) -> pd.DataFrame:
         "u": [_n(v, 3) for v in t["u"]], "runs": [str(v) for v in t["n"]],
         "basis": [b.replace("_", " ") for b in t["basis"]], "in dry matter": [_n(v, 3) for v in t["gross_energy_dry_matter"]],
         "as is": [_n(v, 3) for v in t["gross_energy_as_is"]], "duplicates": [DUPLICATE_WORDS[s] for s in t["status"]],
-        "why": t["reason"],
     })  # fmt: skip
 
 
@@ -211,7 +209,6 @@ def budget_rows(found: Reduction, run_id: str) -> pd.DataFrame:
     import pandas as pd
 
     table = found.budget(run_id)
-    table = table[table["note"] != SULFUR_REASON]
     return pd.DataFrame({
         "heat": table["item"], "J": [f"{v:+.1f}" for v in table["heat_j"]], "u, J": [_n(v, 1) for v in table["u_j"]],
         "J per g": [f"{v:+.1f}" for v in table["j_per_g"]], "share of the whole": [f"{v:.1%}" for v in table["share"]],
@@ -221,19 +218,23 @@ def budget_rows(found: Reduction, run_id: str) -> pd.DataFrame:
 def budget_line(found: Reduction, run_id: str) -> str:
     """The run's gross energy in a sentence."""
     i = found.row_of(run_id)
+    if found.sheet.kind_code[i] == KINDS.index("calibration"):
+        c, u_c = found.heat_capacity[i], found.u_heat_capacity[i]
+        if not np.isfinite(c):
+            return "No heat capacity: " + "; ".join(found.sentences(i))
+        return f"Over the rise of {found.rise[i]:.4f} K: a heat capacity of {c:.1f} J/K, u {u_c:.1f} of this run alone."
     q, u = found.budgets.per_gram[i], found.budgets.u_per_gram[i]
     if not np.isfinite(q):
         return "No gross energy: " + "; ".join(found.sentences(i))
-    counted = (
-        "" if np.isfinite(found.gross[i]) or found.sheet.kind_code[i] == 1 else " It counts for nothing: see why above."
-    )
+    counted = "" if np.isfinite(found.gross[i]) else " It counts for nothing: see why above."
     return f"{q * 1e-3:.4f} MJ/kg as burnt, u {u * 1e-3:.4f}, from {found.mass[i]:.4f} g.{counted}"
 
 
 def curves(found: Reduction, run_id: str) -> dict[str, pd.DataFrame] | None:
     """What the thermogram is drawn from, None where the run has none.
 
-    readings : minutes, temperature, period. drifts : minutes, temperature, line. bounds : minutes, what. rise : minutes,
+    readings : minutes, temperature, period. drifts : minutes, temperature, line. bounds : minutes, what, temperature (where to
+    write it). rise : minutes,
     low, high, label: the corrected rise, drawn where the two drift lines lie exactly that far apart.
     """
     import pandas as pd
@@ -259,8 +260,9 @@ def curves(found: Reduction, run_id: str) -> dict[str, pd.DataFrame] | None:
     return {
         "readings": pd.DataFrame({"minutes": t, "temperature": temp, "period": period}),
         "drifts": pd.DataFrame(lines, columns=["minutes", "temperature", "line"]),
-        "bounds": pd.DataFrame({"minutes": [lit, end], "what": ["firing", "end of the main period"]}),
-        "rise": pd.DataFrame({"minutes": [at], "high": [high], "low": [high - value], "middle": [high - value / 2],
+        "bounds": pd.DataFrame({"minutes": [lit, end], "what": ["firing", "end of the main period"],
+                                "temperature": (temp.min() + temp.max()) / 2}),
+        "rise": pd.DataFrame({"minutes": [at], "high": [high], "low": [high - value], "written": [high - 0.85 * value],
                               "label": [f"corrected rise {value:.4f} K"]}),
     }  # fmt: skip
 
@@ -290,9 +292,24 @@ def rise_rows(found: Reduction, run_id: str) -> pd.DataFrame:
 
 
 def charted(found: Reduction) -> list[str]:
-    """Run ids, those with a thermogram first."""
+    """Run ids: those with a thermogram first, tests before the others."""
     ids = [str(r) for r in found.sheet.text["run_id"]]
-    return sorted(ids, key=lambda r: found.record_of(found.row_of(r)) is None)
+    plain = found.sheet.kind_code == KINDS.index("test")
+    return sorted(ids, key=lambda r: (found.record_of(found.row_of(r)) is None, not plain[found.row_of(r)]))
+
+
+def to_look_at(found: Reduction) -> pd.DataFrame:
+    """Samples whose duplicates disagree and runs that do not simply count, with the reason, as texts."""
+    import pandas as pd
+
+    pairs = [
+        (r["sample_id"], DUPLICATE_WORDS[r["status"]], r["reason"])
+        for r in found.samples.to_dict("records")
+        if r["reason"]
+    ]
+    runs = [(f"run {r['run_id']}, {r['sample_id']}", STATUS_WORDS[r["status"]], r["reason"])
+            for r in found.runs.to_dict("records") if r["reason"]]  # fmt: skip
+    return pd.DataFrame([*pairs, *runs], columns=["sample or run", "what became of it", "why"])
 
 
 def period_bounds(found: Reduction, run_id: str) -> tuple[float, float, float, float] | None:
