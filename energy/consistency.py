@@ -2,10 +2,15 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
+from energy.catalogue.derived import derived_rules
+from energy.display import quantity_figures
 from energy.problems import Problem
 from energy.quantities import dictionary
+from energy.resolve import rule_choices, working_basis
 from energy.samples import Samples
 
 #: protein per nitrogen of any food or feed in use lies between these (FAO/WHO 1973: cabbage 4.8, almonds 5.18, milk 6.38), with 2 %
@@ -13,10 +18,54 @@ from energy.samples import Samples
 LOWEST, HIGHEST = 4.8 * 0.98, 6.38 * 1.02
 #: crude protein of a feed is N x 6.25 by definition
 FEED = 6.25
+#: by definition what the other determinations leave
+LEFT = ("nitrogen_free_extract", "carbohydrate_by_difference", "nonstructural_carbohydrate", "organic_matter")
+#: beside the methods (twice the standard uncertainty of what is left), rounding may open this much, kg/kg: five figures
+#: printed to 0.1 g per 100 g
+ROUNDING = 5 * 0.0005
+BASIS_WORDS = {"as_is": "as is", "dry_matter": "of dry matter"}
 
 
 def find(samples: Samples, feed: bool) -> list[Problem]:
-    """Crude protein beside a nitrogen that is not its own. feed : the factor is 6.25 by definition."""
+    """Values that contradict what others of the same sample say. feed : crude protein is N x 6.25 by definition."""
+    return _protein_and_nitrogen(samples, feed) + [p for name in LEFT for p in _not_what_is_left(samples, name)]
+
+
+def _not_what_is_left(samples: Samples, name: str) -> list[Problem]:
+    """A value by difference that is not the difference, by more than rounding and the methods can open."""
+    if name not in samples.columns:
+        return []
+    rest = _without(samples, name)
+    rules, choice = derived_rules()[name], rule_choices(rest)[name]
+    by_difference = np.isin(choice, [k for k, rule in enumerate(rules, 1) if "solids" in rule.requires])
+    if not by_difference.any():
+        return []
+    given, left, u = quantity_figures(samples, name)[0], *quantity_figures(rest, name)
+    with np.errstate(invalid="ignore"):
+        off = by_difference & (np.abs(given - left) > 2 * np.nan_to_num(u) + ROUNDING)
+    words = " and ".join(dict.fromkeys(rule.words for k, rule in enumerate(rules, 1) if (choice[off] == k).any()))
+    basis = BASIS_WORDS[working_basis(samples, rule_choices(samples))]
+    title = dictionary()[name].title
+    return [
+        Problem(f"{title} is given as {100 * given[i]:.4g} g per 100 g {basis}, but {words} is {100 * left[i]:.4g}: "
+                f"{100 * abs(given[i] - left[i]):.2g} too {'much' if given[i] > left[i] else 'little'}. The value given is used.",
+                "Check the determinations and their bases, or leave the column out: it is found by difference.",
+                samples.source, None if samples.rows is None else int(samples.rows[i]), name, f"{100 * given[i]:.4g}",
+                "warning", str(samples.ids[i]))
+        for i in np.flatnonzero(off).tolist()
+    ]  # fmt: skip
+
+
+def _without(samples: Samples, name: str) -> Samples:
+    """The samples as if a quantity had not been given; protein as given, where it is, and not by its nitrogen."""
+    columns = {q: values for q, values in samples.columns.items() if q != name}
+    if {"crude_protein", "nitrogen"} <= columns.keys():
+        columns["nitrogen"] = np.where(np.isnan(columns["crude_protein"]), columns["nitrogen"], np.nan)
+    return replace(samples, columns=columns, voided={q: v for q, v in samples.voided.items() if q in columns}, memo={})
+
+
+def _protein_and_nitrogen(samples: Samples, feed: bool) -> list[Problem]:
+    """Crude protein beside a nitrogen that is not its own."""
     if not {"crude_protein", "nitrogen"} <= set(samples.columns):
         return []
     protein, nitrogen = samples.columns["crude_protein"], samples.columns["nitrogen"]

@@ -64,7 +64,13 @@ def dry_matter(samples: Samples) -> np.ndarray:
 
 def quantity_values(samples: Samples, name: str) -> np.ndarray:
     """(n,) a measured or derived quantity on the working basis, NaN where it cannot be had."""
-    return np.asarray(evaluate(samples, [_identity(name)]).value[0])
+    return quantity_figures(samples, name)[0]
+
+
+def quantity_figures(samples: Samples, name: str) -> tuple[np.ndarray, np.ndarray]:
+    """(n,) a measured or derived quantity on the working basis and its standard uncertainty, NaN where not to be had."""
+    blocks = evaluate(samples, [_identity(name)])
+    return np.asarray(blocks.value[0]), np.asarray(blocks.u[0])
 
 
 @lru_cache(maxsize=64)
