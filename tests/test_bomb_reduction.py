@@ -170,6 +170,20 @@ def test_every_lack_of_a_run_is_told():
     assert "no heat capacity" in found.runs["reason"][2]
 
 
+def test_a_bag_heavier_than_the_whole_and_an_aid_hotter_than_the_run_are_told():
+    head = "run_id,sample_id,kind,total_mass [g],rise [K],bag_mass [g],bag_heat [J/g]"
+    found = reduced("1,a,test,0.03,2,0.04,46000\n2,a,test,1.5,2,0.5,46000\n", head)
+    assert found.runs["status"].tolist() == ["problem", "problem"]
+    assert "nothing is left" in found.runs["reason"][0]
+    assert "more heat than the calorimeter took up" in found.runs["reason"][1]
+
+
+def test_a_calibration_nobody_knows_is_told():
+    head = "run_id,sample_id,kind,calibration_id,sample_mass [g],rise [K]"
+    found = energy.reduce_runs(sheet("1,,calibration,A,1,2.6\n2,x,test,B,1,2\n", head), name="r.csv")
+    assert "names is not known" in found.runs["reason"][1]
+
+
 # ---- calibration -----------------------------------------------------------------------------------------------------
 
 
@@ -339,6 +353,11 @@ def test_arrays_give_what_a_sheet_gives():
         RunSheet.from_arrays({"sample_mass": [0.95], "rise": [1.75], "ignition_heat": [50]}), heat_capacity=10_000.0
     )
     assert from_arrays.gross[0] == pytest.approx(reduced("1,a,test,0.95,1.75,50\n").gross[0])
+
+
+def test_a_heat_capacity_of_nothing_is_refused():
+    with pytest.raises(WrongUse, match="impossible"):
+        reduced("1,a,test,1,2,0\n", heat_capacity=0.0)
 
 
 @pytest.mark.parametrize("wish", [{"method": "reynolds"}, {"sulfur": "maybe"}, {"nitric_acid": "guess"}])

@@ -143,3 +143,20 @@ def test_outcome_columns_hold_what_the_record_needs():
     needed = {"run_id", "sample_id", "kind", "instrument", "operator", "date", "batch", "rise", "heat_capacity",
               "calibration_id", "gross_energy", "u", "status", "reason"}  # fmt: skip
     assert needed <= set(OUTCOME_COLUMNS)
+
+
+@pytest.mark.parametrize(
+    ("head", "cells", "words"),
+    [
+        ("ignition_mass [mg]", "10", "not said of what"),
+        ("ignition_mass [mg],ignition_material", "10,gold", "cotton_thread"),
+        ("ignition_length [cm],ignition_material", "10,cotton thread", "per g"),
+        ("firing_time [min],main_end [min]", "9,5", "ends before the firing"),
+        ("residual_moisture [%]", "100", "impossible"),
+    ],
+)
+def test_what_cannot_be_reckoned_is_told_in_its_row(head, cells, words):
+    sheet = read(f"run_id,sample_id,sample_mass [g],rise [K],{head}\n1,a,1,2,{cells}\n")
+    assert sheet.is_void[0]
+    assert words in str(sheet.problems[0])
+    assert sheet.problems[0].row == 2

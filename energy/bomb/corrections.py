@@ -224,7 +224,7 @@ class Budget:
     def _shared(
         self, i: int, lines: list[tuple[str, float, float, str]]
     ) -> list[tuple[str, float, float, float, float, str]]:
-        total, mass = float(self.taken_up[i]), float(self.mass[i])
+        total, mass = float(self.taken_up[i]) or np.nan, float(self.mass[i]) or np.nan
         return [(item, joule, u, joule / mass, joule / total, note) for item, joule, u, note in lines]
 
 

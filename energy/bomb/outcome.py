@@ -28,9 +28,11 @@ if TYPE_CHECKING:
 
 #: why a run has no figure: bit -> sentence
 LACKS = {
-    "no_mass": "the mass of what was burnt is missing",
+    "no_mass": "the mass of what was burnt is missing, or nothing is left of it without its bag and capsule",
     "no_rise": "there is neither a temperature rise nor a thermogram with one",
     "no_heat_capacity": "there is no heat capacity: calibrate, name the calibration, or give one",
+    "unknown_calibration": "the calibration it names is not known",
+    "nothing_left": "what was burnt beside it gave more heat than the calorimeter took up: check masses, heats and rise",
     "many_calibrations": "several calibrations could be meant: name one in calibration_id",
 }
 #: what is told of a run that has one: bit -> sentence
@@ -99,7 +101,8 @@ class Reduction:
             return [self._rejection(i)]
         if i in self.sheet.void:
             return [self.sheet.void[i]]
-        said = [words for name, words in LACKS.items() if self._has(i, name)]
+        recorded = self.record_of(i) is not None  # the record's own sentence says why it holds no rise
+        said = [words for name, words in LACKS.items() if self._has(i, name) and not (name == "no_rise" and recorded)]
         for name, words in TOLD.items():
             if self._has(i, name):
                 said.append(self._told(i, name, words))

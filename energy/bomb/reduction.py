@@ -61,6 +61,8 @@ def reduce_runs(
         raise WrongUse(f"nitric_acid = '{nitric_acid}' is not known.", f"One of: {', '.join(NITRIC_ACID)}.")
     if method not in METHODS:
         raise WrongUse(f"The method '{method}' is not known.", f"One of: {', '.join(METHODS)}.")
+    if heat_capacity is not None and not heat_capacity > 0:
+        raise WrongUse(f"A heat capacity of {heat_capacity:g} J/K is impossible.", "Give it in J/K, such as 10062.")
     n = len(sheet)
     for column, k in (("firing_time", 0), ("main_end", 1)):
         if moved:
@@ -176,6 +178,8 @@ def _masses(sheet: RunSheet) -> Floats:
     if "total_mass" in sheet.number:
         wrapping = np.nan_to_num(sheet.values("bag_mass")) + np.nan_to_num(sheet.values("capsule_mass"))
         mass = np.where(np.isnan(mass), sheet.number["total_mass"] - wrapping, mass)
+        with np.errstate(invalid="ignore"):
+            mass = np.where(mass > 0, mass, np.nan)
     return mass
 
 
@@ -325,6 +329,7 @@ def _assign(
     named = sheet.words("calibration_id")
     if len(known) == 1:
         asked = np.array([str(x) in ("", known[0].id) for x in named], dtype=bool)
+        flags[~calibrating & ~asked] |= BIT["unknown_calibration"]
         return np.where(calibrating, code, np.where(asked, 0, -1))
     by_instrument: dict[str, list[int]] = {}
     for k, calibration in enumerate(known):
@@ -334,6 +339,8 @@ def _assign(
     for i in np.flatnonzero(~calibrating).tolist():
         if str(named[i]):
             out[i] = names.get(str(named[i]), -1)
+            if out[i] < 0:
+                flags[i] |= BIT["unknown_calibration"]
             continue
         mine = by_instrument.get(str(instruments[i]), [])
         out[i] = mine[0] if len(mine) == 1 else -1
@@ -370,7 +377,7 @@ def _spread_capacity(
         capacity[own] = given[own]
         u_capacity[own] = np.where(np.isnan(spread), default * given, spread)[own]
         code[own] = -1
-        flags[own] &= ~(BIT["many_calibrations"] | BIT["water_unknown"])
+        flags[own] &= ~(BIT["many_calibrations"] | BIT["unknown_calibration"] | BIT["water_unknown"])
 
 
 def _flag(
@@ -402,6 +409,7 @@ def _flag(
                 m, q = (sheet.values(f"{term.name}_{what}") for what in ("mass", "heat"))
                 _mark(flags, (m > 0) != (q > 0), "bag_bare")
         low, high = dictionary()["gross_energy"].range
+        _mark(flags, burnt & (gross <= 0), "nothing_left")
         _mark(flags, food & ((gross < low * 1e3) | (gross > high * 1e3)), "implausible")
         if not np.isnan(rated).all():
             _mark(flags, over_rating(energy, rated), "over_rating")

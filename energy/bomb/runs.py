@@ -19,7 +19,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from energy import cells
-from energy.bomb.constants import CALORIE
+from energy.bomb.constants import CALORIE, constants, ignition_materials
 from energy.bomb.drift import Flags, Floats
 from energy.bomb.periods import Records, records_of_long
 from energy.bomb.preparation import day_warning
@@ -282,7 +282,8 @@ class _Reader:
 
     def _unknown(self, header: str, name: str, unit: str | None) -> None:
         near = difflib.get_close_matches(normal_form(name), _index(), n=3, cutoff=0.6)
-        close = f"Did you mean {', '.join(repr(_index()[n]) for n in near)}?" if near else ""
+        names = dict.fromkeys(repr(_index()[n]) for n in near)
+        close = f"Did you mean {', '.join(names)}?" if near else ""
         if unit:
             self.stop("this column is not known in a run sheet.",
                       close or "See `python -m energy template runs`, or drop its unit to keep it as a note.", header)  # fmt: skip
@@ -360,10 +361,41 @@ class _Reader:
             if column in sheet.text:
                 sheet.text[column] = np.array([self._date(i, column, str(v)) for i, v in enumerate(sheet.text[column])],
                                               dtype=object)  # fmt: skip
+        self._ignition()
+        self._bounds()
         if "certificate_basis" in sheet.text:
             given = sheet.text["certificate_basis"]
             sheet.text["certificate_basis"] = np.array([BASIS_WORDS.get(normal_form(str(b)), str(b)) for b in given],
                                                        dtype=object)  # fmt: skip
+
+    def _ignition(self) -> None:
+        """Wire or thread by mass or length needs its material, and the one its constant is per."""
+        words = self.sheet.words("ignition_material")
+        for column, per in (("ignition_mass", "/g"), ("ignition_length", "/cm")):
+            amounts = self.sheet.values(column)
+            for i in np.flatnonzero(amounts > 0).tolist():
+                word = normal_form(str(words[i])).replace(" ", "_")
+                if word not in ignition_materials():
+                    self.tell(i, "it is not said of what, or the material is not known.",
+                              f"Write into ignition_material one of: {', '.join(ignition_materials())}; or give ignition_heat [J].",
+                              column, str(words[i]))  # fmt: skip
+                elif not constants()[word].unit.endswith(per):
+                    other = "ignition_mass [mg]" if per == "/cm" else "ignition_length [cm]"
+                    self.tell(i, f"the constant of {word} is per {constants()[word].unit.split('/')[1]}.",
+                              f"Give {other}, or choose another material.", column, str(words[i]))  # fmt: skip
+                else:
+                    continue
+                self.sheet.number[column][i] = np.nan
+        if "ignition_material" in self.sheet.text:
+            plain = [normal_form(str(w)).replace(" ", "_") for w in words]
+            self.sheet.text["ignition_material"] = np.array(plain, dtype=object)
+
+    def _bounds(self) -> None:
+        """A main period that ends before it begins."""
+        firing, end = self.sheet.values("firing_time"), self.sheet.values("main_end")
+        for i in np.flatnonzero(firing >= end).tolist():
+            self.tell(i, "the main period ends before the firing.", "Check both times and their units.", "main_end",
+                      f"{end[i]:g} s")  # fmt: skip
 
     def _date(self, i: int, column: str, text: str) -> str:
         if not text:
