@@ -279,6 +279,12 @@ def test_three_runs_within_their_critical_range_give_their_mean():
     assert pair(18_000, 18_130, 18_060)["status"] == "fourth_run"
 
 
+def test_runs_too_far_apart_widen_the_uncertainty():
+    # a value anywhere between two runs 600 J/g apart: 600/sqrt(12) = 173 J/g
+    assert pair(18_000, 18_600)["u"] > 0.173
+    assert pair(18_000, 18_100)["u"] < 0.05
+
+
 def test_a_single_run_is_told():
     assert pair(18_000)["status"] == "single"
 

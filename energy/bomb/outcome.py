@@ -232,6 +232,8 @@ class Reduction:
         independent2 = np.maximum(self._mean(own2, of_run, count), s_r**2)
         with np.errstate(divide="ignore", invalid="ignore"):
             u = np.sqrt(independent2 / found.n + self._mean(self.common, of_run, count) ** 2)
+        # runs that lie too far apart: the value could be anywhere between them
+        u = np.where(found.too_far_apart, np.hypot(u, found.spread / np.sqrt(12)), u)
         residual = self._mean(self.sheet.values("residual_moisture"), of_run, count, all_runs=True)
         powder = self._mean(self._yields, of_run, count, all_runs=True)
         wet = np.zeros(count, dtype=bool)
