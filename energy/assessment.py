@@ -11,6 +11,7 @@ import numpy as np
 
 from energy import consistency, display, order, reasons, sensitivity, views
 from energy import partition as partitions
+from energy.agreement import GroupAgreement, by_group
 from energy.balance import Balances
 from energy.balance import balances as draw_up
 from energy.catalogue import reader, tables
@@ -329,6 +330,16 @@ class Assessment:
                 raise WrongUse(f"There is no system '{name}'.", "See the column 'system' of results.")
         other = None if less is None else self.catalogue[less]
         return monte_carlo(self.samples, self.index(sample_id), self.catalogue[system], other, seed=seed, trials=trials)
+
+    def agreement(self, robust: bool = True) -> list[GroupAgreement]:
+        """Agreement of measured with computed gross energy over the batch, and per food group; MJ/kg, working basis.
+
+        robust : a few wild samples do not set the bias and the limits.
+        """
+        b, computed = self.blocks, self.blocks.at_heats[0]
+        groups = self.samples.text.get("food_group", np.full(len(self.samples), "", dtype=object))
+        words = np.array([str(g) if g else "" for g in groups], dtype=object)
+        return by_group(computed, computed + b.measurement[0], words, robust)
 
     def covariance(self, sample_id: str) -> pd.DataFrame:
         """Covariance of every two figures of a sample by the inputs they share, (MJ/kg)^2 on the working basis."""

@@ -66,7 +66,8 @@ class Causes:
 
     def order(self, k: int) -> list[int]:
         """The set of one row, likeliest first."""
-        inside = np.flatnonzero(self.beside()[:, k])
+        w = self.weight[:, k]
+        inside = np.flatnonzero((w >= BESIDE * w.max(initial=0.0)) & (w > 0) & self.named[k])
         return [int(j) for j in inside[np.argsort(-self.weight[inside, k], kind="stable")]]
 
 
@@ -172,7 +173,9 @@ def _swapped(m: Matrices, low: np.ndarray, high: np.ndarray) -> tuple[Effect, np
             place = rank + offset
             other = order[np.clip(place, 0, k - 1)]
             mine, theirs = stated[other] / own - m.computed, stated / own[other] - m.computed[other]
-            good = (place >= 0) & (place < k) & (other != np.arange(k)) & (batch[other] == batch) & (basis[other] == basis)
+            good = (
+                (place >= 0) & (place < k) & (other != np.arange(k)) & (batch[other] == batch) & (basis[other] == basis)
+            )
             good &= _closed(mine, low, high, m.v22) & _closed(theirs, low[other], high[other], m.v22[other])
             far = np.where(good, (mine / sd) ** 2 + (theirs / sd[other]) ** 2, np.inf)
             better = far < best

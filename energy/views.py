@@ -70,7 +70,9 @@ def results(
             continue
         count += 1
         own = own_unit(s)
-        k = 1.0 / s.result_scale if own else scale_of(s, a.shown) * factor
+        # an amount per mass stands on the basis shown, a ratio or a digestibility on none
+        based = not own or s.result_basis != "any"
+        k = (1.0 / s.result_scale if own else scale_of(s, a.shown)) * (factor if based else 1.0)
         for name, values in (
             ("value", a.blocks.value[i, rows] * k),
             ("u", a.blocks.u[i, rows] * k),
@@ -78,13 +80,13 @@ def results(
             (
                 "status",
                 np.array(STATUS, dtype=object)[
-                    np.where(off & ~bool(own), np.maximum(a.blocks.status[i, rows], MISSING), a.blocks.status[i, rows])
+                    np.where(off & based, np.maximum(a.blocks.status[i, rows], MISSING), a.blocks.status[i, rows])
                 ],
             ),
             (
                 "reason",
                 np.where(
-                    off & ~bool(own) & (a.blocks.status[i, rows] < MISSING),
+                    off & based & (a.blocks.status[i, rows] < MISSING),
                     f"needs dry matter to be shown per {a.shown.basis.replace('_', ' ')}",
                     figures.figure_reasons(a, i)[rows],
                 ),
@@ -93,7 +95,7 @@ def results(
             pieces[name].append(values)
         for name, text in (
             ("stage", s.stage), ("route", s.route), ("system", s.id), ("source", s.citation), ("locator", s.locator),
-            ("source_status", s.source_status), ("unit", own or a.shown.unit), ("basis", "" if own else a.shown.basis),
+            ("source_status", s.source_status), ("unit", own or a.shown.unit), ("basis", a.shown.basis if based else ""),
         ):  # fmt: skip
             pieces[name].append(text)
     table: dict[str, Any] = {}

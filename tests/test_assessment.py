@@ -336,3 +336,28 @@ def test_every_sample_without_a_known_target_is_listed(wrong):
 def test_nobody_of_that_kind_is_in_the_table():
     with pytest.raises(energy.WrongUse, match="No sample of the table is for horse"):
         energy.assess(MIXED, target="horse")
+
+
+def test_agreement_of_the_routes_over_the_batch():
+    """Limits of agreement by hand: mean and standard deviation of measured less computed gross energy."""
+    rng = np.random.default_rng(4)
+    n = 30
+    columns = {"moisture": np.full(n, 0.1), "crude_protein": rng.uniform(0.05, 0.3, n), "crude_fat": rng.uniform(0.01, 0.3, n),
+               "ash": np.full(n, 0.02)}  # fmt: skip
+    computed = (5.65 * columns["crude_protein"] + 9.40 * columns["crude_fat"]
+                + 4.15 * (0.88 - columns["crude_protein"] - columns["crude_fat"])) * 4.184  # fmt: skip
+    off = rng.normal(0.1, 0.2, n)
+    a = energy.assess(Samples.from_arrays({**columns, "gross_energy": computed + off}), target="human")
+    whole = a.agreement(robust=False)[0]
+    assert whole.limits.bias == pytest.approx(off.mean(), rel=1e-6)
+    assert whole.limits.sd == pytest.approx(off.std(ddof=1), rel=1e-6)
+
+
+def test_an_amount_per_mass_is_shown_on_its_basis():
+    """Half of 20 g digestible nitrogen per kg DM; 10 g/kg DM are 8.8 g/kg as is at 88 % dry matter."""
+    columns = {"dry_matter": np.array([0.88]), "digestible_nitrogen": np.array([0.020])}
+    samples = Samples.from_arrays(columns, basis={"digestible_nitrogen": "dry_matter"})
+    for unit, basis, expected in (("MJ/kg DM", "dry_matter", 10.0), ("MJ/kg as is", "as_is", 8.8)):
+        found = energy.assess(samples, target="growing_pig", systems="all", unit=unit).results
+        row = found[found["system"] == "noblet_inra_2004_urine_energy_n_urine"].iloc[0]
+        assert (row["value"], row["basis"]) == (pytest.approx(expected), basis)
