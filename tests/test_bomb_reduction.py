@@ -230,6 +230,14 @@ def test_corrections_unlike_those_of_the_calibration_are_told():
     assert "ignition was counted in the calibration but not in this run" in found.runs["reason"].iloc[-1]
 
 
+def test_another_wire_than_in_the_calibration_is_told():
+    head = "run_id,sample_id,kind,sample_mass [g],rise [K],ignition_material,ignition_mass [mg]"
+    rows = "1,,calibration,1,2.6,platinum wire,10\n2,x,test,1,2,iron wire,10\n3,x,test,1,2,platinum wire,10\n"
+    reasons = energy.reduce_runs(sheet(rows, head), name="r.csv").runs["reason"]
+    assert "another wire" in reasons[1]
+    assert reasons[2] == ""
+
+
 def test_two_instruments_keep_their_own_heat_capacity():
     head = "run_id,sample_id,kind,instrument,sample_mass [g],rise [K]"
     rows = "1,,calibration,A,1,2.6\n2,,calibration,B,1,2.4\n3,x,test,A,1,2\n4,x,test,B,1,2\n5,x,test,,1,2\n"
@@ -311,6 +319,13 @@ def test_the_samples_join_a_sample_table_and_are_assessed():
     assert len(joined) == 2
     assert joined["gross_energy [MJ/kg as analysed]"].tolist()[0] == pytest.approx(18.0)
     assert np.isnan(joined["gross_energy [MJ/kg as analysed]"][1])
+
+
+def test_a_control_is_nobody_s_sample():
+    head = "run_id,sample_id,kind,sample_mass [g],rise [K]"
+    found = reduced("1,house,control,1,1.8\n2,a,test,1,1.8\n", head)
+    assert found.samples["kind"].tolist() == ["control", "test"]
+    assert found.sample_table["sample_id"].tolist() == ["a"]
 
 
 def test_wet_and_powder_in_one_sheet_keep_their_bases():

@@ -99,10 +99,15 @@ def of_runs(
         return value, np.hypot(np.sqrt(variance) / dt, value / dt * np.asarray(u_rise, dtype=float))
 
 
-def for_other_water(heat_capacity: ArrayLike, water: ArrayLike, water_at_calibration: ArrayLike) -> Floats:
-    """Heat capacity [J/K] with another mass of bucket water [g] than in the calibration, 4.184 J/(g K)."""
+def for_other_water(
+    heat_capacity: ArrayLike, water: ArrayLike, water_at_calibration: ArrayLike, specific_heat: str = "water_heat"
+) -> Floats:
+    """Heat capacity [J/K] with another mass of bucket water [g] than in the calibration.
+
+    specific_heat : water_heat (4.184 J/(g K)) or water_heat_25 (4.18, at 25 °C); 10 g apart they differ by 0.04 J/K.
+    """
     change = np.asarray(water, dtype=float) - np.asarray(water_at_calibration, dtype=float)
-    return np.asarray(heat_capacity, dtype=float) + change * constant("water_heat")
+    return np.asarray(heat_capacity, dtype=float) + change * constant(specific_heat)
 
 
 @dataclass(frozen=True)
@@ -111,7 +116,8 @@ class Calibration:
 
     values : (n,) J/K of the runs that count. mean, sd : J/K. u : of the mean, scatter and certificate. freedom : of the
     scatter. trend : J/K per K of rise and trend_p its p-value. outlier : run id, '' for none. warnings : in words. low,
-    high : rises met. water : g of bucket water, NaN unknown. counted : which corrections were made.
+    high : rises met. water : g of bucket water, NaN unknown. counted : which corrections were made. fired_with : ignition
+    materials named.
     """
 
     id: str
@@ -130,6 +136,7 @@ class Calibration:
     instrument: str = ""
     date: str = ""
     counted: dict[str, bool] = field(default_factory=dict)
+    fired_with: tuple[str, ...] = ()
     warnings: tuple[str, ...] = ()
 
     @property
@@ -166,6 +173,7 @@ def summary(
     date: str = "",
     counted: dict[str, bool] | None = None,
     odd_terms: float = 0.0,
+    fired_with: tuple[str, ...] = (),
 ) -> Calibration:
     """Mean heat capacity of n runs [J/K] with what is to be said of them.
 
@@ -198,7 +206,7 @@ def summary(
             outlier = str(ids[found.index])
             said.append(f"run {outlier} stands out (Grubbs, {found.judged}); find out why before it is left out")
     return Calibration(name, tuple(str(i) for i in ids), c, mean, sd, u, n - 1, slope, p, outlier, float(dt.min()),
-                       float(dt.max()), water, instrument, date, counted or {}, tuple(said))  # fmt: skip
+                       float(dt.max()), water, instrument, date, counted or {}, fired_with, tuple(said))  # fmt: skip
 
 
 def _trend(x: Floats, y: Floats) -> tuple[float, float]:

@@ -41,6 +41,7 @@ TOLD = {
     " sample, or less aid",
     "ignition_differs": "the heat of ignition was counted in {where} but not in {other}; count it in both, or in neither",
     "nitric_acid_differs": "nitric acid was counted in {where} but not in {other}; count it in both, or in neither",
+    "material_differs": "the calibration was fired with another wire or thread: the constant of one method belongs to both",
     "rise_far": "the rise lies far outside those of the calibration",
     "days_apart": "",
     "over_rating": "",
@@ -119,7 +120,7 @@ class Reduction:
             return day_warning(str(self.sheet.words("pellet_date")[i]), str(self.sheet.words("moisture_date")[i]))
         if name == "over_rating":
             return rating_sentence(float(self.energy[i]), float(self.rated[i]))
-        if name.endswith("_differs"):
+        if "{where}" in words:
             term = next(t for t in self.budgets.terms if t.name == name.removesuffix("_differs"))
             where = ("this run", "the calibration") if term.heat[i] != 0 else ("the calibration", "this run")
             return words.format(where=where[0], other=where[1])
@@ -218,7 +219,7 @@ class Reduction:
     def samples(self) -> pd.DataFrame:
         """One row per sample of a test or control: gross energy as analysed, in dry matter and as is, with u and n.
 
-        Columns sample_id, gross_energy, u, n [MJ/kg], basis (as_analysed; as_is where it was burnt wet), spread, limit,
+        Columns sample_id, kind, gross_energy, u, n [MJ/kg], basis (as_analysed; as_is where it was burnt wet), spread, limit,
         status (single, mean, third_run, fourth_run, median, none), reason, residual_moisture, preparation_yield [kg/kg],
         gross_energy_dry_matter, u_dry_matter, gross_energy_as_is, u_as_is.
         """
@@ -245,8 +246,10 @@ class Reduction:
         reasons = [
             _judgement(s, float(d), float(limit)) for s, d, limit in zip(status, found.spread, found.limit, strict=True)
         ]
+        control = np.zeros(count, dtype=bool)
+        control[of_run[(self.sheet.kind_code == KINDS.index("control")) & (of_run >= 0)]] = True
         return pd.DataFrame({
-            "sample_id": names, "gross_energy": found.value * 1e-3, "u": u * 1e-3, "n": found.n,
+            "sample_id": names, "kind": np.where(control, "control", "test"), "gross_energy": found.value * 1e-3, "u": u * 1e-3, "n": found.n,
             "basis": np.where(wet, "as_is", "as_analysed"), "spread": found.spread * 1e-3, "limit": found.limit * 1e-3,
             "status": status, "reason": reasons, "residual_moisture": residual, "preparation_yield": powder,
             "gross_energy_dry_matter": dry * 1e-3, "u_dry_matter": u_dry * 1e-3,
@@ -279,7 +282,7 @@ class Reduction:
         """
         import pandas as pd
 
-        found = self.samples[self.samples["n"] > 0]
+        found = self._tests
         if found["basis"].nunique() <= 1:
             return self._wide(None)
         lines = [found[["sample_id", "basis", "u", "n"]].assign(analyte="gross_energy", result=found["gross_energy"],
@@ -291,10 +294,16 @@ class Reduction:
         long = pd.concat([part for part in lines if len(part)], ignore_index=True)
         return long[["sample_id", "analyte", "result", "unit", "basis", "u", "n"]].rename(columns={"n": "runs"})
 
+    @property
+    def _tests(self) -> pd.DataFrame:
+        """The samples that have a figure; controls are not samples of anybody."""
+        found = self.samples
+        return found[(found["n"] > 0) & (found["kind"] == "test")].reset_index(drop=True)
+
     def _wide(self, basis: str | None) -> pd.DataFrame:
         import pandas as pd
 
-        found = self.samples[self.samples["n"] > 0].reset_index(drop=True)
+        found = self._tests
         on = basis or (str(found["basis"].iloc[0]) if len(found) else "as_analysed")
         words = {"as_analysed": "as analysed", "as_is": "as is", "dry_matter": "DM"}.get(on)
         if words is None:
@@ -320,7 +329,7 @@ class Reduction:
         """
         if "sample_id" not in table.columns:
             raise WrongUse("The sample table has no column sample_id.", "Give the table with its sample ids.")
-        if basis is None and self.samples["basis"].nunique() > 1:
+        if basis is None and self._tests["basis"].nunique() > 1:
             raise WrongUse("Some samples were burnt wet, others as a powder.",
                            "Choose one basis for the column: basis='dry_matter' or 'as_is'.")  # fmt: skip
         mine = self._wide(basis)

@@ -310,7 +310,8 @@ def _calibrations(
         known = water[at][~np.isnan(water[at])]
         made.append(heat_capacity.summary(
             str(key), sheet.text["run_id"][at], c[at], rise[at], uc[at], float(known.mean()) if len(known) else np.nan,
-            str(instrument[at[0]]), max(str(d) for d in dates[at]), corrections.counted(terms, mine), odd))  # fmt: skip
+            str(instrument[at[0]]), max(str(d) for d in dates[at]), corrections.counted(terms, mine), odd,
+            tuple(sorted({str(w) for w in sheet.words("ignition_material")[at]} - {""}))))  # fmt: skip
         code[(keys == key) & (sheet.kind_code == CALIBRATION)] = len(made) - 1
     return tuple(made), code
 
@@ -419,6 +420,11 @@ def _flag(
             _mark(flags, burnt & ((rise < near / FAR) | (rise > far * FAR)), "rise_far")
     if "pellet_date" in sheet.text and "moisture_date" in sheet.text:
         flags[sheet.days_apart] |= BIT["days_apart"]
+    if "ignition_material" in sheet.text:
+        for k, calibration in enumerate(known):
+            if calibration.fired_with:
+                same = np.isin(sheet.text["ignition_material"].astype(str), (*calibration.fired_with, ""))
+                _mark(flags, burnt & (code == k) & ~same, "material_differs")
     if any(c.counted for c in known):
         for name in ("ignition", "nitric_acid"):
             there = np.array([c.counted.get(name, False) if c.run_ids else None for c in known], dtype=object)

@@ -25,6 +25,8 @@ if TYPE_CHECKING:
 STATUS_WORDS = {"ok": "● counts", "warned": "◇ counts, look", "rejected": "✕ rejected", "problem": "· not computed"}
 DUPLICATE_WORDS = {"single": "◇ one run only", "mean": "● mean of all", "third_run": "✕ burn a third", "fourth_run":
                    "✕ median, burn a fourth", "median": "✕ median", "none": "· none counts"}  # fmt: skip
+#: remarks set on screen in full
+MOST_TOLD = 40
 _RISKY = ("=", "+", "-", "@", "\t")
 ABOUT_U = "u is this laboratory's own; between laboratories gross energy of feeds spreads more (some 0.24 MJ/kg in a ring test)."
 
@@ -293,9 +295,9 @@ def rise_rows(found: Reduction, run_id: str) -> pd.DataFrame:
 
 def charted(found: Reduction) -> list[str]:
     """Run ids: those with a thermogram first, tests before the others."""
-    ids = [str(r) for r in found.sheet.text["run_id"]]
     plain = found.sheet.kind_code == KINDS.index("test")
-    return sorted(ids, key=lambda r: (found.record_of(found.row_of(r)) is None, not plain[found.row_of(r)]))
+    order = sorted(range(len(found)), key=lambda i: (found.record_of(i) is None, not plain[i]))
+    return [str(found.sheet.text["run_id"][i]) for i in order]
 
 
 def to_look_at(found: Reduction) -> pd.DataFrame:
@@ -309,7 +311,10 @@ def to_look_at(found: Reduction) -> pd.DataFrame:
     ]
     runs = [(f"run {r['run_id']}, {r['sample_id']}", STATUS_WORDS[r["status"]], r["reason"])
             for r in found.runs.to_dict("records") if r["reason"]]  # fmt: skip
-    return pd.DataFrame([*pairs, *runs], columns=["sample or run", "what became of it", "why"])
+    rows = [*pairs, *runs]
+    if len(rows) > MOST_TOLD:
+        rows = [*rows[:MOST_TOLD], (f"{len(rows) - MOST_TOLD} more", "", "take the written results to see them all")]
+    return pd.DataFrame(rows, columns=["sample or run", "what became of it", "why"])
 
 
 def period_bounds(found: Reduction, run_id: str) -> tuple[float, float, float, float] | None:
