@@ -33,6 +33,8 @@ WARNINGS = {
     " chosen; record longer, or set the end of the main period",
     "short_after": "the after period is short beside the main period, so that its drift is carried over four times its own"
     " length or more; record longer, or set the end of the main period",
+    "unfinished": "the combustion has hardly died away at the end of the main period: by how fast it died away before, more"
+    " than 0.1 % of the rise may be lacking; record longer, or set the end of the main period later",
     "coarse": "the thermometer's step is coarse for this rise; read one more decimal",
     "disordered": "readings were out of order of time, or two have one time; they were put in order, check the times",
     "falls_in_rise": "the temperature falls inside the main period: a swapped or misread reading",
@@ -164,7 +166,12 @@ def corrected_rise(
         # two rectangular roundings, 2 x step^2 / 12; and drifts slower than the thermometer's step shows
         hidden = step / np.sqrt(12) * length / (bounds.after_end - bounds.main_end)
         u = np.sqrt(variance + cut**2 + step**2 / 6 + np.where(after_known, 0.0, hidden) ** 2)
+        # what is still to come lies anywhere between nothing and this
+        to_come = _still_to_come(t, np.where(inside, temp, np.nan), low, after, bounds)
+        u = np.hypot(u, np.where(after_known, 0.0, to_come) / np.sqrt(3))
     warned, change = _warnings(found, bounds, after, value, u, step, inside, no_fore, noise2, after_known)
+    late = ~after_known & (to_come > constant("unfinished_share") * value) & ((warned & BIT["unreadable"]) == 0)
+    warned |= np.where(late, BIT["unfinished"], 0)
     unreadable = (warned & BIT["unreadable"]) > 0
     value = np.where(unreadable, np.nan, value)
     # where the drift changes, the rise could lie anywhere between those of its first and its last rate
@@ -216,6 +223,26 @@ def _time_reached(t: Floats, temp: Floats, level: Floats) -> Floats:
         share = np.where(after > before, (level - before) / (after - before), 1.0)
         time = t[row, k - 1] + np.clip(share, 0.0, 1.0) * (t[row, k] - t[row, k - 1])
     return np.asarray(time)
+
+
+def _still_to_come(t: Floats, temp: Floats, low: Floats, after: Drift, bounds: Periods) -> Floats:
+    """(n,) K by which the rise may be off because the combustion had not died away when the after period began.
+
+    From 90 to 99 % of the rise an exponential takes ln 10 of its time constants; what it still has to give at the end of
+    the main period is then known. In the after period it also bends the fitted drift: a line through an exponential of
+    time constant c over a window A has the slope 6 c / A^2 of its first value, at most 1 / c, and that slope is carried
+    over the main period.
+    """
+    whole = after.temperature[:, None] + after.rate[:, None] * (t - after.time[:, None]) - low[:, None]
+    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+        share = (temp - low[:, None]) / whole
+        nearly, almost = (_time_reached(t, share, np.full(len(t), level)) for level in (0.90, 0.99))
+        fading = (almost - nearly) / np.log(10)
+        tail = 0.01 * (after.at(bounds.main_end) - low) * np.exp(-(bounds.main_end - almost) / fading)
+        window = bounds.after_end - bounds.main_end
+        slope = np.minimum(1 / fading, 6 * fading / window**2)
+        lacking = tail * (1 + (bounds.main_end - bounds.ignition) * slope)
+    return np.where(np.isfinite(lacking) & (fading > 0), lacking, 0.0)
 
 
 def _warnings(
