@@ -80,7 +80,7 @@ def test_verdicts_stand_on_the_first_screen(page, tmp_path):
     page.set_viewport_size({"width": page.viewport_size["width"], "height": 900})
     expect(page.get_by_text("Invented demo data")).to_be_in_viewport(timeout=60_000)
     expect(page.get_by_text("concordant", exact=False).first).to_be_in_viewport(timeout=60_000)
-    expect(page.get_by_test_id("stDataFrame")).to_be_in_viewport()
+    expect(page.get_by_test_id("stDataFrame").first).to_be_in_viewport()
     fits(page, tmp_path, "bench")
 
 
