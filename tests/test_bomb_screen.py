@@ -75,3 +75,13 @@ def test_a_sheet_that_cannot_be_used_shows_every_problem(app):
     text = said(app)
     assert "sample_mass has" in text or "has no unit" in text
     assert "rise [J]" in text
+
+
+def test_the_gross_energies_are_put_beside_a_sample_table_and_taken_to_the_bench(app):
+    table = b"sample_id,crude protein [% DM]\nwheat bran,17\n009,20\n"
+    app.file_uploader(key="beside_upload").set_value(("own.csv", table, "text/csv")).run()
+    assert not app.exception
+    assert "1 of 2 samples got a gross energy" in said(app)
+    next(b for b in app.button if b.label == "Assess it on the Bench").click().run()
+    assert not app.exception
+    assert app.title[0].value == "Bench"

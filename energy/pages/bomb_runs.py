@@ -17,6 +17,7 @@ from energy.report import bench_work, screen
 
 #: choices that outlive their widgets
 DEFAULTS: dict[str, Any] = {"method": "regnault_pfaundler", "sulfur": "off", "nitric_acid": "given", "rated": None}
+BASES = {"as_analysed": "as analysed (with the powder's moisture)", "dry_matter": "dry matter", "as_is": "as is"}
 NITRIC_ACID = {"given": "as the sheet gives it", "share": "a share of the heat where nobody titrated"}
 
 
@@ -129,6 +130,7 @@ def samples(found: Reduction) -> None:
         st.dataframe(bench_work.sample_rows(found), hide_index=True, width="stretch")
         st.caption(bench_work.ABOUT_U)
         st.download_button("Sample table (CSV)", bench_work.sample_csv(found), "gross_energy.csv", "text/csv")
+        beside(found)
     look = bench_work.to_look_at(found)
     if len(look):
         st.subheader("To look at", anchor=False)
@@ -138,11 +140,34 @@ def samples(found: Reduction) -> None:
         st.table(screen.safe(bench_work.calibration_rows(found)), hide_index=True)
 
 
+def beside(found: Reduction) -> None:
+    """A sample table with the gross energies put beside it, to take away or to the Bench."""
+    with st.expander("Put them beside a sample table"):
+        place, words = st.columns(2)
+        table = place.file_uploader("Sample table with a column sample_id", ["csv", "xlsx"], key="beside_upload")
+        basis = words.selectbox("Basis of the gross energy", list(BASES), format_func=lambda b: BASES[b])
+        if table is None:
+            return
+        try:
+            data, told = bench_work.joined_csv(found, table.getvalue(), table.name, basis)
+        except StructuralProblems as problems:
+            session.problem_list(problems.problems)
+            return
+        except EnergyError as problem:
+            st.error(str(problem))
+            return
+        st.markdown(screen.plain(told))
+        st.download_button("Joined table (CSV)", data, "joined.csv", "text/csv")
+        if st.button("Assess it on the Bench"):
+            session.use("joined.csv", data)
+            st.switch_page("energy/pages/bench.py")
+
+
 def one_run(found: Reduction) -> None:
     """One run: the thermogram, the parts of its rise and the budget of its heat."""
     st.subheader("One run", anchor=False)
-    ids = bench_work.charted(found)
-    run = st.selectbox("Run", ids, key="run_choice", format_func=lambda r: bench_work.run_title(found, r))
+    titles = bench_work.run_titles(found)
+    run = st.selectbox("Run", bench_work.charted(found), key="run_choice", format_func=lambda r: titles.get(r, r))
     for sentence in bench_work.remarks(found, run):
         st.warning(screen.plain(sentence))
     curves = bench_work.curves(found, run)

@@ -17,6 +17,7 @@ from energy.bomb.outcome import Reduction
 from energy.bomb.rise import METHODS
 from energy.bomb.runs import KINDS, template
 from energy.report.tables import check_ending, whole, workbook
+from energy.tabular import read_table
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -371,10 +372,26 @@ def sulfur_name(convention: str) -> str:
             "all acid booked as nitric"}[convention]  # fmt: skip
 
 
-def run_title(found: Reduction, run_id: str) -> str:
-    """A run as a choice: its id, what was burnt, what became of it."""
-    row = found.runs.iloc[found.row_of(run_id)]
-    return f"{run_id}  {row['sample_id']}  {STATUS_WORDS[row['status']]}"
+def run_titles(found: Reduction) -> dict[str, str]:
+    """Run id -> what stands in the choice: id, what was burnt, what became of it."""
+    t = found.runs
+    return {str(r): f"{r}  {sample}  {STATUS_WORDS[str(status)]}"
+            for r, sample, status in zip(t["run_id"], t["sample_id"], t["status"], strict=True)}  # fmt: skip
+
+
+def joined_csv(found: Reduction, data: bytes, name: str, basis: str) -> tuple[bytes, str]:
+    """A wide sample table with the gross energies beside it, and how many of its samples got one."""
+    import io
+
+    import pandas as pd
+
+    raw = read_table(data, name)
+    table = found.joined(pd.DataFrame(raw.cells, columns=raw.headers), basis)
+    column = next(c for c in table.columns if c.startswith("gross_energy ["))
+    count = int(table[column].notna().sum())
+    buffer = io.StringIO()
+    _text_safe(table).to_csv(buffer, index=False)
+    return buffer.getvalue().encode("utf-8"), f"{count} of {len(table)} samples got a gross energy."
 
 
 def remarks(found: Reduction, run_id: str) -> list[str]:
