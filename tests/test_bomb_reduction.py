@@ -219,6 +219,14 @@ def test_both_bases_give_one_heat_capacity():
     assert first == pytest.approx(second, rel=2e-5)
 
 
+def test_bomb_conditions_outside_the_certificate_are_told_with_their_size():
+    # 10 ml of water in 0.340 dm3: the formula would give 21 J/g, and is not applied
+    head = "run_id,kind,sample_mass [g],rise [K],oxygen_pressure [MPa],bomb_water [g],bomb_volume [dm3],final_temperature [C]"
+    found = energy.calibrate(sheet("1,calibration,1,2.65,3.0,10,0.340,25\n", head), name="r.csv")
+    assert "+21 J/g" in found.runs["reason"][0]
+    assert found.calibrations[0].mean == pytest.approx(26_454 / 2.65)
+
+
 def test_another_mass_of_bucket_water_is_reckoned():
     rows = CALIBRATION.replace(",\n", ",2000\n") + "1,a,test,1,2,50,2000\n2,a,test,1,2,50,2010\n"
     table = energy.reduce_runs(sheet(rows, HEAD), name="r.csv").runs.set_index("run_id")
@@ -307,6 +315,7 @@ def test_from_powder_to_dry_matter_and_as_is():
     found = reduced("1,a,test,1,2,4,200,60\n2,a,test,1,2,4,200,60\n", head).samples.iloc[0]
     assert found["gross_energy_dry_matter"] == pytest.approx(20 / 0.96)
     assert found["gross_energy_as_is"] == pytest.approx(6.0)
+    assert found["dry_matter"] == pytest.approx(0.288)  # 60/200 x 0.96
 
 
 def test_the_samples_join_a_sample_table_and_are_assessed():

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from energy.bomb.constants import CALORIE, constants, ignition_materials, in_joule
+from energy.bomb.constants import constants, ignition_materials, in_joule
 from energy.bomb.constants import value as constant
 from energy.bomb.drift import Flags, Floats
 from energy.problems import WrongUse
@@ -29,8 +29,8 @@ SULFUR = {
 }
 #: what becomes of a run with soot
 SOOT_REASON = (
-    "soot or unburnt sample: the run is rejected, not corrected (1 mg of carbon withholds about 33 J); repeat it with a"
-    " smaller or better pressed pellet, or an aid"
+    f"soot or unburnt sample: the run is rejected, not corrected (1 mg of carbon withholds about {constant('soot') * 1e-3:.0f} J);"
+    " repeat it with a smaller or better pressed pellet, or an aid"
 )
 
 
@@ -161,11 +161,6 @@ def burnt_beside(
     return Term(name, title, m * q, np.sqrt(of_blank**2 + weighed**2))
 
 
-def soot_heat(carbon: ArrayLike) -> Floats:
-    """Heat [J] withheld by unburnt carbon [g]: for the size only, the run is rejected."""
-    return np.asarray(carbon, dtype=float) * constant("soot")
-
-
 @dataclass(frozen=True)
 class Budget:
     """Where the heat of n runs came from. taken_up : heat capacity x rise, J. terms : what did not come from the sample."""
@@ -238,20 +233,3 @@ def aid_share(terms: Sequence[Term], taken_up: Floats) -> Floats:
 def counted(terms: Sequence[Term], rows: Flags) -> dict[str, bool]:
     """Whether ignition and nitric acid were counted in some runs: term -> yes or no."""
     return {t.name: bool(t.used[rows].any()) for t in terms if t.name in ("ignition", "nitric_acid")}
-
-
-def differing(calibration: dict[str, bool], test: dict[str, bool]) -> list[str]:
-    """Where calibration and test were corrected unlike: an error that would cancel then does not."""
-    titles = {"ignition": "the heat of ignition", "nitric_acid": "nitric acid"}
-    said = []
-    for name, title in titles.items():
-        in_calibration, in_test = calibration.get(name, False), test.get(name, False)
-        if in_calibration != in_test:
-            here, there = ("calibration", "tests") if in_calibration else ("tests", "calibration")
-            said.append(f"{title} was counted in the {here} but not in the {there}; count it in both, or in neither")
-    return said
-
-
-def calories(joule: ArrayLike) -> Floats:
-    """J -> thermochemical calories."""
-    return np.asarray(joule, dtype=float) / CALORIE

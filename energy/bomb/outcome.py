@@ -14,7 +14,7 @@ from energy.bomb.constants import constants
 from energy.bomb.constants import value as constant
 from energy.bomb.corrections import SOOT_REASON, Budget, aid_share
 from energy.bomb.drift import Flags, Floats
-from energy.bomb.heat_capacity import Calibration
+from energy.bomb.heat_capacity import Calibration, conditions_size
 from energy.bomb.preparation import day_warning
 from energy.bomb.rating import rating_sentence
 from energy.bomb.rise import Rise
@@ -47,7 +47,8 @@ TOLD = {
     "over_rating": "",
     "implausible": "the gross energy is not plausible for food or feed: check mass, rise and units",
     "water_unknown": "the bucket water is given here but not in the calibration: no correction for another mass was made",
-    "conditions": "the bomb conditions lie outside the certificate's range: its heat was taken as it stands",
+    "conditions": "the bomb conditions lie outside the certificate's range: its heat was taken as it stands (its formula would"
+    " give {size:+.0f} J/g there); calibrate and test under the same conditions",
     "bag_bare": "a bag, capsule or aid was weighed, but its heat is not given, or the reverse: it counts as nothing; burn"
     " blanks of the lot",
 }
@@ -118,6 +119,13 @@ class Reduction:
     def _told(self, i: int, name: str, words: str) -> str:
         if name == "days_apart":
             return day_warning(str(self.sheet.words("pellet_date")[i]), str(self.sheet.words("moisture_date")[i]))
+        if name == "conditions":
+            given = [
+                float(np.nan_to_num(self.sheet.values(c)[i])) for c in ("oxygen_pressure", "bomb_water", "bomb_volume")
+            ]
+            warm = float(self.sheet.values("final_temperature")[i])
+            size = conditions_size(given[0], float(self.mass[i]), given[1], given[2], warm if warm == warm else 25.0)
+            return words.format(size=size)
         if name == "over_rating":
             return rating_sentence(float(self.energy[i]), float(self.rated[i]))
         if "{where}" in words:
@@ -220,7 +228,7 @@ class Reduction:
         """One row per sample of a test or control: gross energy as analysed, in dry matter and as is, with u and n.
 
         Columns sample_id, kind, gross_energy, u, n [MJ/kg], basis (as_analysed; as_is where it was burnt wet), spread, limit,
-        status (single, mean, third_run, fourth_run, median, none), reason, residual_moisture, preparation_yield [kg/kg],
+        status (single, mean, third_run, fourth_run, median, none), reason, residual_moisture, preparation_yield, dry_matter as is [kg/kg],
         gross_energy_dry_matter, u_dry_matter, gross_energy_as_is, u_as_is.
         """
         import pandas as pd
@@ -252,6 +260,7 @@ class Reduction:
             "sample_id": names, "kind": np.where(control, "control", "test"), "gross_energy": found.value * 1e-3, "u": u * 1e-3, "n": found.n,
             "basis": np.where(wet, "as_is", "as_analysed"), "spread": found.spread * 1e-3, "limit": found.limit * 1e-3,
             "status": status, "reason": reasons, "residual_moisture": residual, "preparation_yield": powder,
+            "dry_matter": preparation.dry_matter(np.where(wet, 1.0, powder), residual),
             "gross_energy_dry_matter": dry * 1e-3, "u_dry_matter": u_dry * 1e-3,
             "gross_energy_as_is": as_is * 1e-3, "u_as_is": u_as_is * 1e-3,
         })  # fmt: skip

@@ -15,6 +15,7 @@ from energy.bomb.drift import Floats
 from energy.bomb.heat_capacity import Calibration
 from energy.bomb.outcome import BIT, LACKS, Reduction
 from energy.bomb.periods import periods
+from energy.bomb.preparation import net_mass
 from energy.bomb.rating import over_rating, run_energy
 from energy.bomb.rise import BIT as RISE_BIT
 from energy.bomb.rise import METHODS, Rise, corrected_rise
@@ -177,7 +178,7 @@ def _masses(sheet: RunSheet) -> Floats:
     mass = sheet.values("sample_mass")
     if "total_mass" in sheet.number:
         wrapping = np.nan_to_num(sheet.values("bag_mass")) + np.nan_to_num(sheet.values("capsule_mass"))
-        mass = np.where(np.isnan(mass), sheet.number["total_mass"] - wrapping, mass)
+        mass = np.where(np.isnan(mass), net_mass(sheet.number["total_mass"], wrapping), mass)
         with np.errstate(invalid="ignore"):
             mass = np.where(mass > 0, mass, np.nan)
     return mass

@@ -278,7 +278,7 @@ def _warnings(
         coarse = step / np.sqrt(6) > constant("resolution_share") * value
         drop = np.diff(temp, axis=1)
         fall = inside[:, 1:] & inside[:, :-1] & (drop < -(4 * np.sqrt(2 * noise2) + 1.5 * step)[:, None])
-        climbing = temp[:, :-1] < (bounds_temperature(found, bounds) - 0.05 * value)[:, None]
+        climbing = temp[:, :-1] < (_highest(found, bounds) - 0.05 * value)[:, None]
         falls = (fall & climbing).any(axis=1)
         brief = ((bounds.after_end - bounds.main_end) * LONGEST_REACH <= length) & ~after_known
     told = {"unreadable": unreadable, "no_fore_period": no_fore, "not_steady": unsteady, "short_after": brief, "coarse": coarse,
@@ -289,7 +289,7 @@ def _warnings(
     return warned, np.nan_to_num(change)
 
 
-def bounds_temperature(found: Records, bounds: Periods) -> Floats:
+def _highest(found: Records, bounds: Periods) -> Floats:
     """(n,) the highest temperature up to the end of the main period."""
     with np.errstate(invalid="ignore"):
         seen = np.where(found.time <= bounds.main_end[:, None], found.temperature, -np.inf)
