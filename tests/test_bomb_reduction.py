@@ -148,6 +148,11 @@ def test_moisture_of_another_day_is_told():
     assert "2 days away" in reduced("1,a,test,1,2,2026-05-04,2026-05-06\n", head).runs["reason"][0]
 
 
+def test_a_moisture_without_its_day_is_asked_about():
+    head = "run_id,sample_id,kind,sample_mass [g],rise [K],residual_moisture [%]"
+    assert any("both belong to one day" in note for note in reduced("1,a,test,1,2,4\n", head).notes)
+
+
 def test_the_run_over_the_vessel_s_rating_is_told_and_none_is_called_safe():
     found = reduced("1,a,test,1,4,0\n2,a,test,1,2,0\n", rated_energy=30_000.0)
     assert "do not fire" in found.runs["reason"][0]

@@ -118,7 +118,7 @@ def reduce_runs(
     void = status > RUN_STATUS.index("warned")
     if void.any():
         gross[void], u[void] = np.nan, np.nan
-    notes = _notes(all_of_them, sulfur, terms)
+    notes = _notes(sheet, all_of_them, sulfur, terms)
     r = constant("repeatability") if repeatability is None else repeatability
     return Reduction(sheet, rise, u_rise, capacity, u_capacity, mass, budget, gross, u, common, flags, status, code,
                      all_of_them, found, rated, energy, r, notes, told)  # fmt: skip
@@ -453,7 +453,7 @@ def _status(sheet: RunSheet, flags: NDArray[np.int64], found: Rise | None) -> ND
     return np.where(sheet.is_rejected, RUN_STATUS.index("rejected"), status).astype(np.int8)
 
 
-def _notes(known: tuple[Calibration, ...], sulfur: str, terms: tuple[Term, ...]) -> tuple[str, ...]:
+def _notes(sheet: RunSheet, known: tuple[Calibration, ...], sulfur: str, terms: tuple[Term, ...]) -> tuple[str, ...]:
     """What holds for the whole sheet."""
     said = [f"{c.id}: {w}" for c in known for w in c.warnings]
     if sulfur == "off":
@@ -462,4 +462,7 @@ def _notes(known: tuple[Calibration, ...], sulfur: str, terms: tuple[Term, ...])
         said.append("No heat of ignition is in the sheet: it counts as nothing, in calibration and test alike.")
     if not any(t.name == "nitric_acid" for t in terms):
         said.append("No nitric acid is in the sheet: it counts as nothing, in calibration and test alike.")
+    if "residual_moisture" in sheet.number and not {"pellet_date", "moisture_date"} <= set(sheet.text):
+        said.append("The days of pellets and residual moisture are not given (pellet_date, moisture_date): a powder takes up or"
+                    " loses water within hours, so both belong to one day.")  # fmt: skip
     return tuple(said)
