@@ -12,7 +12,7 @@ from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from energy import run_commands
+from energy import label_commands, run_commands
 from energy.problems import EnergyError, StructuralProblems
 
 if TYPE_CHECKING:
@@ -40,6 +40,7 @@ def parser() -> argparse.ArgumentParser:
     listing.add_argument("--route")
     listing.add_argument("--house", metavar="FILE", help="TOML file of the house's own equations")
     run_commands.add(commands)
+    label_commands.add(commands)
     template = commands.add_parser("template", help="an empty table to fill in")
     template.add_argument("kind", choices=("samples", "long", "runs"))
     template.add_argument("--target", help="an animal's name gives the columns of a feed laboratory")
@@ -66,7 +67,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
     options = parser().parse_args(arguments)
     try:
         run = {"assess": _assess, "equations": _equations, "template": _template, "demo": _demo,
-               "reduce": run_commands.run, "calibrate": run_commands.run}[options.command]  # fmt: skip
+               "reduce": run_commands.run, "calibrate": run_commands.run,
+               "declare": label_commands.run}[options.command]  # fmt: skip
         return run(options)
     except StructuralProblems as problems:
         _tell(str(problems))

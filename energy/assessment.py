@@ -29,6 +29,7 @@ from energy.compare import (
     coverage_of,
     verdict_codes,
 )
+from energy.declare import Declared, declare
 from energy.evaluate import MISSING, Blocks, evaluate
 from energy.matrices import matrices
 from energy.monte_carlo import Checked, monte_carlo
@@ -279,8 +280,15 @@ class Assessment:
 
     @cached_property
     def declared(self) -> pd.DataFrame:
-        """Declared values; filled by the label module, columns present until then."""
-        return views.declared(self)
+        """Declared values under the laws of this assessment, per 100 g as is, by simple acceptance; see `declare`."""
+        return views.declared(self.declare(), self.samples.ids)
+
+    def declare(self, **wishes: Any) -> list[Declared]:
+        """The same as arrays, one per law. wishes : per, serving, decision, coverage, lot, tolerance_set of declare.declare."""
+        laws = [
+            s for s in self.choice.systems if s.twin_of is None and s.route == "composition" and s.components and s.law
+        ]
+        return [declare(self.samples, s, self.catalogue, **wishes) for s in laws]
 
     @cached_property
     def balances(self) -> pd.DataFrame:

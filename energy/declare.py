@@ -298,3 +298,36 @@ def _claims(d: Declared) -> None:
 def outcome_words(d: Declared) -> np.ndarray:
     """(n,) within, outside, inconclusive, no_rule or '' where nothing is declared or computed."""
     return np.array(OUTCOMES, dtype=object)[d.outcome]
+
+
+def rule_words(d: Declared) -> str:
+    """What the limit is, and how a propagated one arises."""
+    if d.rule.kind != "propagated":
+        return d.rule.words
+    return (f"{d.rule.words}: each nutrient's tolerance times its factor, added in quadrature as independent; around the grams "
+            "that the label would print")  # fmt: skip
+
+
+def proposals(d: Declared) -> list[str]:
+    """(n,) the figures to print in both units, each with the sum that leads to it; '' where nothing can be computed."""
+    found = []
+    for i in range(len(d.amount)):
+        told = [f"{d.text(unit, i)} {unit} ({d.sum_words(unit, i)})" for unit in UNITS
+                if unit in d.computed and np.isfinite(d.computed[unit][i])]  # fmt: skip
+        found.append("; ".join(told))
+    return found
+
+
+def warnings_of(d: Declared) -> list[str]:
+    """(n,) what must be known beside a verdict; '' where nothing."""
+    found = []
+    for i in range(len(d.amount)):
+        told = list(d.warnings) if np.isfinite(d.computed[d.energy.leading][i]) else []
+        if d.flips[i]:
+            told.append("computed from the grams as printed the verdict would be another: rounding decides it")
+        for claim, flips in d.claim_flips.items():
+            if flips[i]:
+                told.append(f"rounding decides whether the claim '{claim.claim}' ({claim.at_most:g} {claim.unit}, {claim.source}, "
+                            f"{claim.locator}) is met")  # fmt: skip
+        found.append("; ".join(told))
+    return found

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from energy.catalogue import tables
-from energy.catalogue.records import System
+from energy.catalogue.records import SOURCE_STATUS, System
 from energy.causes import Causes, find
 from energy.compare import BIASED, CONCORDANT, DISCORDANT, INCONCLUSIVE, NOT_COMPUTED, SCREENING, SINGLE_ROUTE, VERDICTS
 from energy.display import basis_factor, quantity_values, scale_of, visible
@@ -356,4 +356,23 @@ def _declared_words(a: Assessment, row: int) -> str:
         said = [f"{given[row] * 100:.4g} kJ/100 g (converted from the unit declared)"]
     if not said:
         return "none is declared"
-    return f"declared {' and '.join(said)} as is; the law's tolerance is not judged here yet"
+    told = f"declared {' and '.join(said)} as is"
+    if a.declared.empty:
+        return f"{told}; no law is chosen that could judge it"
+    for line in a.declared[a.declared["sample_id"] == a.samples.ids[row]].itertuples():
+        told += f". {_judged_words(line)}"
+    return told
+
+
+def _judged_words(line: Any) -> str:
+    """One law's word on a declared figure."""
+    unit = line.judged_unit
+    computed = line.computed_kj if unit == "kJ" else line.computed_kcal
+    if line.verdict == "":
+        return f"{line.law}: not judged, since the law's energy cannot be computed"
+    if line.verdict == "no_rule":
+        return f"{line.law}: {computed:.4g} {unit} computed; {line.rule}"
+    limits = [f"{word} {x:.4g}" for word, x in (("at least", line.lower), ("at most", line.upper)) if np.isfinite(x)]
+    return (f"{line.law}: {computed:.4g} {unit} computed, {' and '.join(limits)} {unit} allowed ({line.rule}; {line.locator}, "
+            f"{SOURCE_STATUS.get(line.source_status, line.source_status)}): {line.verdict}, with a probability of "
+            f"{line.probability_within:.3g}. {line.bomb_words}")  # fmt: skip

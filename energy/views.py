@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -9,6 +10,7 @@ import numpy as np
 from energy import causes, figures, reasons
 from energy.catalogue.records import SOURCE_STATUS, System
 from energy.compare import VERDICTS
+from energy.declare import PER_WORDS, Declared, outcome_words, proposals, rule_words, warnings_of
 from energy.display import basis_factor, scale_of, visible
 from energy.evaluate import MISSING, STATUS
 from energy.gather import UNIT_SHOWN
@@ -35,6 +37,8 @@ VERDICT_COLUMNS = (
 DECLARED_COLUMNS = (
     "sample_id", "law", "declared_kj", "declared_kcal", "computed_kj", "computed_kcal", "rounded_kj", "rounded_kcal",
     "lower", "upper", "probability_within", "verdict", "locator",
+    "judged_unit", "per", "u", "label_kj", "label_kcal", "spread_low", "spread_high", "decision_rule", "speaks_of", "rule",
+    "source_status", "rounding_rule", "rounding_locator", "rounding_status", "bomb_words", "proposal", "warning",
 )  # fmt: skip
 #: the columns every table of balances has; reconciled values follow, one triple per measured column
 BALANCE_COLUMNS = (
@@ -206,11 +210,50 @@ def _pair_table(a: Assessment, p: int, rows: np.ndarray, factor: np.ndarray | fl
     )
 
 
-def declared(a: Assessment) -> pd.DataFrame:
-    """Columns of the design; rows come with the label module."""
+def declared(found: Sequence[Declared], ids: np.ndarray) -> pd.DataFrame:
+    """One row per sample and law: declared against computed, rounded, limits, probability, verdict, and every source.
+
+    Energies per `per`; lower, upper, u, spread in `judged_unit`. label_kj, label_kcal : from the grams as printed.
+    rounded_kj, rounded_kcal : as the law rounds them, NaN where no rule was found. proposal : the figures to print with the
+    sum that leads to them. bomb_words : whether a bomb figure may stand on the label.
+    """
     import pandas as pd
 
-    return pd.DataFrame(columns=list(DECLARED_COLUMNS))
+    frames = [_declared_of(d, ids) for d in found]
+    if not frames:
+        return pd.DataFrame(columns=list(DECLARED_COLUMNS))
+    table = pd.concat([f.assign(_i=np.arange(len(f)), _law=k) for k, f in enumerate(frames)], ignore_index=True)
+    return table.sort_values(["_i", "_law"], kind="stable", ignore_index=True)[list(DECLARED_COLUMNS)]
+
+
+def _declared_of(d: Declared, ids: np.ndarray) -> pd.DataFrame:
+    import pandas as pd
+
+    n = len(ids)
+    nothing = np.full(n, np.nan)
+
+    def judged(parts: dict[str, np.ndarray]) -> np.ndarray:
+        return np.where(d.judged == "kJ", parts.get("kJ", nothing), parts.get("kcal", nothing)).astype(float)
+
+    first = d.energy.leading
+    rules = [d.rounding_rule(first, i) for i in range(n)]
+    return pd.DataFrame(
+        {
+            "sample_id": ids, "law": d.law.id,
+            "declared_kj": d.declared["kJ"], "declared_kcal": d.declared["kcal"],
+            "computed_kj": d.computed.get("kJ", nothing), "computed_kcal": d.computed.get("kcal", nothing),
+            "rounded_kj": d.printed.get("kJ", nothing), "rounded_kcal": d.printed.get("kcal", nothing),
+            "lower": d.lower, "upper": d.upper, "probability_within": d.probability, "verdict": outcome_words(d),
+            "locator": d.rule.locator, "judged_unit": d.judged, "per": PER_WORDS[d.per], "u": judged(d.u),
+            "label_kj": d.from_label.get("kJ", nothing), "label_kcal": d.from_label.get("kcal", nothing),
+            "spread_low": judged(d.spread_low), "spread_high": judged(d.spread_high), "decision_rule": d.decision_words,
+            "speaks_of": d.speaks_of, "rule": rule_words(d), "source_status": d.rule.source_status,
+            "rounding_rule": [r.words if r else "no rule was found" for r in rules],
+            "rounding_locator": [f"{r.source}, {r.locator}" if r else "" for r in rules],
+            "rounding_status": [r.source_status if r else "" for r in rules],
+            "bomb_words": d.bomb, "proposal": proposals(d), "warning": warnings_of(d),
+        }
+    )  # fmt: skip
 
 
 def balances(a: Assessment) -> pd.DataFrame:

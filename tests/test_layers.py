@@ -58,7 +58,7 @@ LAYERS = [
     ["energy.partition"],
     ["energy.views"],
     ["energy.assessment"],
-    ["energy.report", "energy.report.tables", "energy.report.board", "energy.report.document", "energy.report.screen"],
+    ["energy.report", "energy.report.tables", "energy.report.board", "energy.report.document", "energy.report.screen", "energy.report.label_work"],
     ["energy.report.entries", "energy.report.agreement", "energy.report.bench_work"],
     [
         "energy.pages",
@@ -73,7 +73,7 @@ LAYERS = [
         "energy.pages.calorimeter",
         "energy.pages.declared",
     ],
-    ["energy.run_commands"],
+    ["energy.run_commands", "energy.label_commands"],
     ["energy.__main__"],
 ]
 HEIGHT = {module: level for level, modules in enumerate(LAYERS) for module in modules}

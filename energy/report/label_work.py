@@ -1,0 +1,188 @@
+"""Declared values as tables, texts and files: one law, or all side by side."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from html import escape
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from energy import views
+from energy.catalogue.records import SOURCE_STATUS
+from energy.declare import PER_WORDS, Declared, outcome_words, rule_words
+from energy.label_law import label_law
+from energy.report.tables import check_ending, whole, workbook
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from energy.assessment import Assessment
+
+#: outcome -> its mark; none speaks without its word
+MARKS = {"within": "◆", "outside": "✕", "inconclusive": "◇", "no_rule": "○", "": "·"}
+WORDS = {
+    "within": "within",
+    "outside": "outside",
+    "inconclusive": "not decided",
+    "no_rule": "no rule found",
+    "": "not judged",
+}
+CAUTION = ("This does not replace the law's text or a licensed adviser: what may stand on a label is decided by them. Figures of "
+           "laws are marked as read at the source, read in a second document, or recalled.")  # fmt: skip
+ROUTE = ("Laws speak of figures found in their own way. What is judged here is the law's sum from the composition; a figure by "
+         "bomb is evidence about the label unless the law says that it may stand.")  # fmt: skip
+
+
+def word(outcome: str) -> str:
+    """An outcome with its mark."""
+    return f"{MARKS[outcome]} {WORDS[outcome]}"
+
+
+def status(name: str) -> str:
+    """How a rule is known, in words."""
+    return SOURCE_STATUS.get(name, "no source")
+
+
+def table(a: Assessment, found: Sequence[Declared]) -> pd.DataFrame:
+    """One row per sample and law, as `Assessment.declared`."""
+    return views.declared(found, a.samples.ids)
+
+
+def _n(x: float, digits: int = 1) -> str:
+    return f"{x:.{digits}f}" if np.isfinite(x) else ""
+
+
+def judged_table(a: Assessment, d: Declared) -> pd.DataFrame:
+    """One law as people read it: declared, computed, from printed grams, limits, probability, outcome."""
+    import pandas as pd
+
+    outcome = outcome_words(d)
+    rows = []
+    for i, sample in enumerate(a.samples.ids):
+        unit = str(d.judged[i])
+        nothing = np.full(len(outcome), np.nan)
+        rows.append({
+            "sample": str(sample), "verdict": word(str(outcome[i])),
+            f"declared per {PER_WORDS[d.per]}": " / ".join(
+                f"{d.declared[u][i]:.6g} {u}" for u in ("kJ", "kcal") if np.isfinite(d.declared[u][i])
+            ),
+            "judged in": unit, "from the analysis": _n(d.computed.get(unit, nothing)[i]), "u": _n(d.u.get(unit, nothing)[i]),
+            "from printed grams": _n(d.from_label.get(unit, nothing)[i]),
+            "rounding alone allows": _span(d.spread_low.get(unit, nothing)[i], d.spread_high.get(unit, nothing)[i]),
+            "at least": _n(d.lower[i]), "at most": _n(d.upper[i]),
+            "probability": "" if np.isnan(d.probability[i]) else f"{d.probability[i]:.3f}",
+        })  # fmt: skip
+    return pd.DataFrame(rows)
+
+
+def _span(low: float, high: float) -> str:
+    return f"{low:.1f} to {high:.1f}" if np.isfinite(low) and np.isfinite(high) else ""
+
+
+def side_by_side(a: Assessment, found: Sequence[Declared]) -> pd.DataFrame:
+    """Samples x laws: the outcome of each law beside the others."""
+    import pandas as pd
+
+    columns = {"sample": [str(i) for i in a.samples.ids]}
+    for d in found:
+        columns[d.law.id] = [word(str(o)) for o in outcome_words(d)]
+    return pd.DataFrame(columns)
+
+
+def proposal_table(a: Assessment, found: Sequence[Declared]) -> pd.DataFrame:
+    """The figures to print under each law with the sums that lead to them, and what rounding would decide."""
+    full = table(a, found)
+    full = full[full["proposal"] != ""]
+    return full[["sample_id", "law", "per", "proposal", "warning"]].rename(
+        columns={"sample_id": "sample", "proposal": "to print, and the sum that leads to it", "warning": "mind"}
+    )
+
+
+def rules_table(found: Sequence[Declared]) -> pd.DataFrame:
+    """What each law says: limit and rounding with article and paragraph, how known, and whether a bomb figure may stand."""
+    import pandas as pd
+
+    rows = []
+    for d in found:
+        law = label_law(d.law.id)
+        first = d.energy.leading
+        computed = np.flatnonzero(np.isfinite(d.computed[first]))
+        rule = d.rounding_rule(first, int(computed[0])) if len(computed) else None
+        rows += [
+            {"law": d.law.title, "about": "energy", "rule": f"{d.law.title}: sum of factors times grams",
+             "where": f"{d.law.citation}, {d.law.locator}", "how it is known": status(d.law.source_status)},
+            {"law": "", "about": "tolerance", "rule": rule_words(d), "where": f"{d.rule.source}, {d.rule.locator}".strip(", "),
+             "how it is known": status(d.rule.source_status)},
+            {"law": "", "about": "what the tolerance holds for", "rule": d.rule.tested or "not said", "where": "", "how it is known": ""},
+            {"law": "", "about": "rounding", "rule": rule.words if rule else "no rule was found: nothing is rounded",
+             "where": f"{rule.source}, {rule.locator}" if rule else "", "how it is known": status(rule.source_status) if rule else ""},
+            {"law": "", "about": "grams the energy is computed from",
+             "rule": {"unrounded": "unrounded", "either": "unrounded or as printed"}.get(law.energy_from, "not said: both are shown"),
+             "where": f"{law.source}, {law.locator}".strip(", "), "how it is known": status(law.source_status)},
+            {"law": "", "about": "a figure by bomb", "rule": d.bomb, "where": "", "how it is known": ""},
+        ]  # fmt: skip
+    return pd.DataFrame(rows)
+
+
+def text(a: Assessment, found: Sequence[Declared]) -> str:
+    """For the terminal: the laws side by side where there are several, then each sample of a single law."""
+    if not found:
+        return "No law of this species or use is a sum of factors: there is nothing to declare by."
+    if len(found) > 1:
+        return f"{_columns(side_by_side(a, found))}\n\n{_rules_text(found)}"
+    d = found[0]
+    lines = [f"{d.law.title} ({d.law.id}), per {PER_WORDS[d.per]}; {d.decision_words}. Said of {d.speaks_of}.", ""]
+    lines.append(_columns(judged_table(a, d)))
+    full = table(a, found)
+    told = full[full["warning"] != ""]
+    lines += ["", "To print:"] + [f"  {r.sample_id}: {r.proposal}" for r in full.itertuples() if r.proposal]
+    lines += (["", "Mind:"] + [f"  {r.sample_id}: {r.warning}" for r in told.itertuples()]) if len(told) else []
+    return "\n".join([*lines, "", _rules_text(found)])
+
+
+def _columns(frame: pd.DataFrame) -> str:
+    texts = [[str(value) for value in row] for row in frame.itertuples(index=False)]
+    heads = [str(c) for c in frame.columns]
+    widths = [max(map(len, column)) for column in zip(heads, *texts, strict=True)]
+    head, *body = ("  ".join(f"{t:<{w}}" for t, w in zip(row, widths, strict=True)).rstrip() for row in [heads, *texts])
+    return "\n".join([head, *body])
+
+
+def _rules_text(found: Sequence[Declared]) -> str:
+    lines = []
+    for d in found:
+        lines.append(f"{d.law.id}: {rule_words(d)}" + (f" ({d.rule.source}, {d.rule.locator}; {status(d.rule.source_status)})"
+                                                      if d.rule.source else "") + f". {d.bomb}.")  # fmt: skip
+    return "\n".join(lines)
+
+
+def save(frame: pd.DataFrame, path: str | Path) -> list[Path]:
+    """Write the table by the path's ending."""
+    from energy.report.document import STYLE, html_table
+
+    goal = check_ending(path)
+    ending = goal.suffix.lower()
+    if ending == ".csv":
+        whole(goal, lambda p: frame.map(_safe).to_csv(p, index=False))
+    elif ending == ".parquet":
+        whole(goal, lambda p: frame.to_parquet(p, index=False))
+    elif ending == ".xlsx":
+        whole(goal, lambda p: workbook({"declared": frame}, p))
+    elif ending == ".json":
+        whole(goal, lambda p: _write(p, frame.to_json(orient="records", double_precision=15)))
+    else:
+        body = (f"<!doctype html><html lang='en'><head><meta charset='utf-8'><title>Declared values</title><style>{STYLE}</style>"
+                f"</head><body><h1>Declared values</h1>{html_table(frame)}<p>{escape(ROUTE)}</p><p>{escape(CAUTION)}</p></body></html>\n")  # fmt: skip
+        whole(goal, lambda p: _write(p, body))
+    return [goal]
+
+
+def _safe(value: object) -> object:
+    """A text that a spreadsheet would take for a formula gets a leading apostrophe."""
+    return f"'{value}" if isinstance(value, str) and value.startswith(("=", "+", "-", "@")) else value
+
+
+def _write(path: Path, text: str) -> None:
+    path.write_text(text, encoding="utf-8")
