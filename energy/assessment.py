@@ -31,6 +31,7 @@ from energy.compare import (
 )
 from energy.declare import Declared, declare
 from energy.evaluate import MISSING, Blocks, evaluate
+from energy.label_law import declares
 from energy.matrices import matrices
 from energy.monte_carlo import Checked, monte_carlo
 from energy.problems import Problem, WrongUse
@@ -285,9 +286,7 @@ class Assessment:
 
     def declare(self, **wishes: Any) -> list[Declared]:
         """The same as arrays, one per law. wishes : per, serving, decision, coverage, lot, tolerance_set of declare.declare."""
-        laws = [
-            s for s in self.choice.systems if s.twin_of is None and s.route == "composition" and s.components and s.law
-        ]
+        laws = [s for s in self.choice.systems if declares(s)]
         return [declare(self.samples, s, self.catalogue, **wishes) for s in laws]
 
     @cached_property

@@ -114,6 +114,8 @@ class Declared:
         """The sum that leads to a figure: factor times grams, per the label's amount."""
         if unit not in self.coefficient:
             first = unit_of(self.law)
+            if not self.law.components:
+                return f"the law's formula: {self.computed[first][i] / (100 if first == 'kJ' else 1):.5g} {'MJ/kg' if first == 'kJ' else first}"
             return f"{self.computed[first][i]:.6g} {first} by the law's own conversion"
         lines = []
         for component in (self.law if unit_of(self.law) == unit else self._twin()).components:

@@ -57,6 +57,13 @@ def label_law(law: str) -> LabelLaw:
     return _laws().get(law, LabelLaw(law))
 
 
+def declares(system: System) -> bool:
+    """Whether a figure by this system may be declared: a law's sum of factors, or a law's formula for a feed."""
+    if system.twin_of is not None or system.route != "composition":
+        return False
+    return bool(system.law and system.components) or system.id in _laws()
+
+
 def bomb_words(system: System) -> str:
     """Whether a bomb figure may stand on the label of a law, in words."""
     return BOMB_WORDS[system.bomb_allowed]

@@ -202,6 +202,24 @@ def test_the_table_carries_article_and_how_it_is_known():
     assert (table["rounded_kj"][0], table["rounded_kcal"][0]) == (982, 233)
 
 
+def feed(declared, **more):
+    row = {"sample_id": "f", "dry matter [%]": 88.0, "crude protein [% as fed]": 20.0, "crude fat [% as fed]": 6.0,
+           "starch [% as fed]": 40.0, "sugars [% as fed]": 4.0, "starch_method": "polarimetric",
+           "declared energy [MJ/kg]": declared}  # fmt: skip
+    a = energy.assess(pd.DataFrame([{**row, **more}]), target="poultry")
+    return a.declared.set_index("law").loc["ec_152_2009_annex_vii"]
+
+
+def test_a_poultry_feed_is_judged_by_its_law():
+    """Annex VII by hand: 0.1551 x 20 + 0.3431 x 6 + 0.1669 x 40 + 0.1301 x 4 = 12.3570 MJ/kg."""
+    energy_by_hand = 0.1551 * 20 + 0.3431 * 6 + 0.1669 * 40 + 0.1301 * 4
+    line = feed(12.0)
+    assert line["computed_kj"] == pytest.approx(100 * energy_by_hand)
+    room = (line["upper"] - 1200, 1200 - line["lower"])
+    assert room[0] == pytest.approx(room[1])  # an absolute tolerance on both sides
+    assert (line["verdict"], feed(11.0)["verdict"]) == ("within", "outside")
+
+
 TABLE = ("sample_id,protein [g/100 g as is],fat [g/100 g as is],moisture [%],available carbohydrate [g/100 g as is],"
          "total dietary fibre [g/100 g as is],ash [g/100 g as is],declared energy [kJ/100 g],declared energy [kcal/100 g]\n"
          "b,9.6,2.4,40.0,39.6,7.1,1.3,982,200\n")  # fmt: skip

@@ -40,6 +40,18 @@ def verdict_styles(column: pd.Series[Any]) -> list[str]:
     return [f"color: {by_word.get(str(v), INK)}; font-weight: 600" for v in column]
 
 
+#: outcomes of a declared value; each also has its word and mark
+OUTCOME_COLOURS = {"within": "#0072B2", "outside": "#D55E00", "not decided": "#CC79A7"}
+
+
+def outcome_styles(column: pd.Series[Any]) -> list[str]:
+    """Text colour per outcome; the word and the mark stand in the cell."""
+    return [
+        f"color: {next((c for w, c in OUTCOME_COLOURS.items() if str(v).endswith(w)), '#5d6a75')}; font-weight: 600"
+        for v in column
+    ]
+
+
 def verdict_line(verdict: str, sentence: str) -> str:
     """A verdict with its mark, larger, and what it rests on."""
     colour = COLOURS[verdict]

@@ -5,21 +5,32 @@ from __future__ import annotations
 from collections.abc import Sequence
 from html import escape
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any, Protocol
 
 import numpy as np
 
 from energy import views
+from energy.catalogue import reader
 from energy.catalogue.records import SOURCE_STATUS
-from energy.declare import PER_WORDS, Declared, outcome_words, rule_words
-from energy.label_law import label_law
+from energy.declare import PER_WORDS, Declared, declare, outcome_words, rule_words, warnings_of
+from energy.label_law import declares, label_law
 from energy.report.tables import check_ending, whole, workbook
+from energy.samples import Samples
 
 if TYPE_CHECKING:
     import pandas as pd
 
-    from energy.assessment import Assessment
 
+class Holder(Protocol):
+    """Whatever holds the samples that were judged: an assessment, or products made from recipes."""
+
+    @property
+    def samples(self) -> Samples: ...
+
+
+ORDER = ("outside", "inconclusive", "within", "no_rule", "")
+#: every law of a species or use
+ALL = "all"
 #: outcome -> its mark; none speaks without its word
 MARKS = {"within": "◆", "outside": "✕", "inconclusive": "◇", "no_rule": "○", "": "·"}
 WORDS = {
@@ -40,12 +51,46 @@ def word(outcome: str) -> str:
     return f"{MARKS[outcome]} {WORDS[outcome]}"
 
 
+def laws(target: str) -> dict[str, str]:
+    """id -> title of what an energy may be declared by, for a species or use."""
+    return {s.id: s.title for s in reader.systems().values() if declares(s) and target in s.targets}
+
+
+def judge(samples: Samples, target: str, law: str, **wishes: Any) -> list[Declared]:
+    """Every sample under one law, or under all of a species or use. wishes : as for declare.declare. Raises WrongUse."""
+    catalogue = reader.systems()
+    chosen = list(laws(target)) if law == ALL else [law]
+    return [declare(samples, catalogue[i], catalogue, **wishes) for i in chosen]
+
+
 def status(name: str) -> str:
     """How a rule is known, in words."""
     return SOURCE_STATUS.get(name, "no source")
 
 
-def table(a: Assessment, found: Sequence[Declared]) -> pd.DataFrame:
+def share(percent: float) -> float:
+    """A percentage as a share."""
+    return percent / 100
+
+
+def capital(text: str) -> str:
+    """A sentence's first letter."""
+    return f"{text[:1].upper()}{text[1:]}"
+
+
+#: the marks in words
+LEGEND = ("From printed grams: the same sum from the grams as the label prints them. Rounding alone allows: what other foods with "
+          "the same printed grams can have. Probability: that the true energy lies within the limits.")  # fmt: skip
+
+
+def headline(d: Declared) -> str:
+    """What a table of verdicts is about."""
+    return (f"{d.law.title}, per {PER_WORDS[d.per]}. Decision rule: {d.decision_words}. The verdict is about {d.speaks_of}. "
+            f"Limit: {rule_words(d)} ({d.rule.source + ', ' + d.rule.locator if d.rule.source else 'no source'}; "
+            f"{status(d.rule.source_status)}).")  # fmt: skip
+
+
+def table(a: Holder, found: Sequence[Declared]) -> pd.DataFrame:
     """One row per sample and law, as `Assessment.declared`."""
     return views.declared(found, a.samples.ids)
 
@@ -54,7 +99,7 @@ def _n(x: float, digits: int = 1) -> str:
     return f"{x:.{digits}f}" if np.isfinite(x) else ""
 
 
-def judged_table(a: Assessment, d: Declared) -> pd.DataFrame:
+def judged_table(a: Holder, d: Declared) -> pd.DataFrame:
     """One law as people read it: declared, computed, from printed grams, limits, probability, outcome."""
     import pandas as pd
 
@@ -64,7 +109,7 @@ def judged_table(a: Assessment, d: Declared) -> pd.DataFrame:
         unit = str(d.judged[i])
         nothing = np.full(len(outcome), np.nan)
         rows.append({
-            "sample": str(sample), "verdict": word(str(outcome[i])),
+            "sample": str(sample), "verdict": _verdict(d, i, str(outcome[i])),
             f"declared per {PER_WORDS[d.per]}": " / ".join(
                 f"{d.declared[u][i]:.6g} {u}" for u in ("kJ", "kcal") if np.isfinite(d.declared[u][i])
             ),
@@ -74,14 +119,22 @@ def judged_table(a: Assessment, d: Declared) -> pd.DataFrame:
             "at least": _n(d.lower[i]), "at most": _n(d.upper[i]),
             "probability": "" if np.isnan(d.probability[i]) else f"{d.probability[i]:.3f}",
         })  # fmt: skip
-    return pd.DataFrame(rows)
+    found = pd.DataFrame(rows)
+    # what needs a look comes first
+    return found.iloc[np.argsort([ORDER.index(str(o)) for o in outcome], kind="stable")].reset_index(drop=True)
+
+
+def _verdict(d: Declared, i: int, outcome: str) -> str:
+    if outcome == "" and not any(np.isfinite(d.declared[u][i]) for u in d.declared):
+        return f"{MARKS['']} nothing declared"
+    return word(outcome)
 
 
 def _span(low: float, high: float) -> str:
     return f"{low:.1f} to {high:.1f}" if np.isfinite(low) and np.isfinite(high) else ""
 
 
-def side_by_side(a: Assessment, found: Sequence[Declared]) -> pd.DataFrame:
+def side_by_side(a: Holder, found: Sequence[Declared]) -> pd.DataFrame:
     """Samples x laws: the outcome of each law beside the others."""
     import pandas as pd
 
@@ -91,13 +144,25 @@ def side_by_side(a: Assessment, found: Sequence[Declared]) -> pd.DataFrame:
     return pd.DataFrame(columns)
 
 
-def proposal_table(a: Assessment, found: Sequence[Declared]) -> pd.DataFrame:
+def proposal_table(a: Holder, found: Sequence[Declared]) -> pd.DataFrame:
     """The figures to print under each law with the sums that lead to them, and what rounding would decide."""
-    full = table(a, found)
-    full = full[full["proposal"] != ""]
-    return full[["sample_id", "law", "per", "proposal", "warning"]].rename(
-        columns={"sample_id": "sample", "proposal": "to print, and the sum that leads to it", "warning": "mind"}
-    )
+    import pandas as pd
+
+    rows = []
+    for d in found:
+        minds = warnings_of(d)
+        for i, sample in enumerate(a.samples.ids):
+            if not np.isfinite(d.computed[d.energy.leading][i]):
+                continue
+            row = {"sample": str(sample)} | ({"law": d.law.title} if len(found) > 1 else {})
+            for unit in ("kJ", "kcal"):
+                row[f"{unit} per {PER_WORDS[d.per]}"] = (
+                    d.text(unit, i) if unit in d.computed else "not given by the law"
+                )
+            for unit in ("kJ", "kcal"):
+                row[f"sum in {unit}"] = d.sum_words(unit, i) if unit in d.computed else ""
+            rows.append(row | {"mind": minds[i]})
+    return pd.DataFrame(rows)
 
 
 def rules_table(found: Sequence[Declared]) -> pd.DataFrame:
@@ -126,7 +191,7 @@ def rules_table(found: Sequence[Declared]) -> pd.DataFrame:
     return pd.DataFrame(rows)
 
 
-def text(a: Assessment, found: Sequence[Declared]) -> str:
+def text(a: Holder, found: Sequence[Declared]) -> str:
     """For the terminal: the laws side by side where there are several, then each sample of a single law."""
     if not found:
         return "No law of this species or use is a sum of factors: there is nothing to declare by."
@@ -135,10 +200,10 @@ def text(a: Assessment, found: Sequence[Declared]) -> str:
     d = found[0]
     lines = [f"{d.law.title} ({d.law.id}), per {PER_WORDS[d.per]}; {d.decision_words}. Said of {d.speaks_of}.", ""]
     lines.append(_columns(judged_table(a, d)))
-    full = table(a, found)
-    told = full[full["warning"] != ""]
-    lines += ["", "To print:"] + [f"  {r.sample_id}: {r.proposal}" for r in full.itertuples() if r.proposal]
-    lines += (["", "Mind:"] + [f"  {r.sample_id}: {r.warning}" for r in told.itertuples()]) if len(told) else []
+    for heading, column in (("To print:", "proposal"), ("Mind:", "warning")):
+        full = table(a, found)
+        told = [(str(i), str(t)) for i, t in zip(full["sample_id"], full[column], strict=True) if t]
+        lines += ["", heading, *(f"  {i}: {t}" for i, t in told)] if told else []
     return "\n".join([*lines, "", _rules_text(found)])
 
 
