@@ -177,7 +177,7 @@ def rules_table(found: Sequence[Declared]) -> pd.DataFrame:
         rule = d.rounding_rule(first, int(computed[0])) if len(computed) else None
         rows += [
             {"law": d.law.title, "about": "energy", "rule": f"{d.law.title}: sum of factors times grams",
-             "where": f"{d.law.citation}, {d.law.locator}", "how it is known": status(d.law.source_status)},
+             "where": d.law.citation if d.law.locator in d.law.citation else f"{d.law.citation}, {d.law.locator}", "how it is known": status(d.law.source_status)},
             {"law": "", "about": "tolerance", "rule": rule_words(d), "where": f"{d.rule.source}, {d.rule.locator}".strip(", "),
              "how it is known": status(d.rule.source_status)},
             {"law": "", "about": "what the tolerance holds for", "rule": d.rule.tested or "not said", "where": "", "how it is known": ""},
