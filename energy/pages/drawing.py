@@ -120,3 +120,48 @@ def partition_chart(points: pd.DataFrame, unit: str) -> alt.LayerChart:
         tooltip=["step:N", "route:N", "figure:N"],
     )  # fmt: skip
     return alt.LayerChart(layer=[line, mark]).properties(height=alt.Step(26))
+
+
+CALL_MARKS = {"quiet": ("#0072B2", "circle"), "signals": ("#D55E00", "triangle-up")}
+LINE_DASHES = {"centre": [1, 0], "warning": [6, 4], "action": [2, 3]}
+
+
+def record_chart(points: pd.DataFrame, lines: pd.DataFrame) -> alt.LayerChart:
+    """Heat capacities over time with their intervals, centre and limits; what signals has its own mark."""
+    import altair as alt
+
+    y = alt.Y("heat capacity:Q", title="heat capacity, J/K", scale=alt.Scale(zero=False))
+    x = alt.X("date:T", title=None)
+    kinds = list(CALL_MARKS)
+    colour = alt.Color("call:N", scale=alt.Scale(domain=kinds, range=[CALL_MARKS[k][0] for k in kinds]),
+                       legend=alt.Legend(title=None, orient="top"))  # fmt: skip
+    rule = alt.Chart(lines).mark_rule(color=INK).encode(
+        y="at:Q", strokeDash=alt.StrokeDash("line:N", scale=alt.Scale(domain=list(LINE_DASHES), range=list(LINE_DASHES.values())), legend=None)
+    )  # fmt: skip
+    bar = (
+        alt.Chart(points)
+        .mark_rule(strokeWidth=1.5)
+        .encode(x=x, y=alt.Y("low:Q", title="heat capacity, J/K"), y2="high:Q", color=colour)
+    )
+    mark = alt.Chart(points).mark_point(size=80, filled=True, opacity=1).encode(
+        x=x, y=y, color=colour, shape=alt.Shape("call:N", scale=alt.Scale(domain=kinds, range=[CALL_MARKS[k][1] for k in kinds])),
+        tooltip=["calibration:N", "heat capacity:Q", "why:N"],
+    )  # fmt: skip
+    return alt.LayerChart(layer=[rule, bar, mark]).properties(height=300)
+
+
+def sums_chart(sums: pd.DataFrame, decision: float) -> alt.LayerChart:
+    """Both cumulative sums, and the lines beyond which a shift is signalled."""
+    import altair as alt
+    import pandas as pd
+
+    sides = ["upward", "downward"]
+    line = alt.Chart(sums).mark_line(point=True).encode(
+        x=alt.X("date:T", title=None), y=alt.Y("sum:Q", title="cumulative sum, J/K"),
+        color=alt.Color("side:N", scale=alt.Scale(domain=sides, range=["#0072B2", "#CC79A7"]), legend=alt.Legend(title=None, orient="top")),
+        strokeDash=alt.StrokeDash("side:N", scale=alt.Scale(domain=sides, range=[[1, 0], [5, 3]]), legend=None),
+    )  # fmt: skip
+    limits = (
+        alt.Chart(pd.DataFrame({"at": [decision, -decision]})).mark_rule(color=INK, strokeDash=[6, 4]).encode(y="at:Q")
+    )
+    return alt.LayerChart(layer=[line, limits]).properties(height=300)
