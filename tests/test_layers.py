@@ -58,7 +58,14 @@ LAYERS = [
     ["energy.partition"],
     ["energy.views"],
     ["energy.assessment"],
-    ["energy.report", "energy.report.tables", "energy.report.board", "energy.report.document", "energy.report.screen", "energy.report.label_work"],
+    [
+        "energy.report",
+        "energy.report.tables",
+        "energy.report.board",
+        "energy.report.document",
+        "energy.report.screen",
+        "energy.report.label_work",
+    ],
     ["energy.report.recipe_work", "energy.report.record_work"],
     ["energy.report.entries", "energy.report.agreement", "energy.report.bench_work"],
     [
