@@ -202,6 +202,18 @@ def test_the_table_carries_article_and_how_it_is_known():
     assert (table["rounded_kj"][0], table["rounded_kcal"][0]) == (982, 233)
 
 
+def test_a_value_below_its_limit_runs_through_to_the_label():
+    """Fat '<3': 0, 1.5 and 3 g. 17 x 9.6 + 17 x 39.6 = 836.4; with 37 x 0, 1.5, 3: 836, 892, 947 kJ."""
+    from energy.report.label_work import proposal_table
+
+    frame = pd.DataFrame([{"sample_id": "s", "protein [g/100 g as is]": "9.6", "fat [g/100 g as is]": "<3",
+                           "available carbohydrate [g/100 g as is]": "39.6", "moisture [%]": "45"}])  # fmt: skip
+    a = energy.assess(energy.read_samples(frame, target="human"), law="eu_1169_2011")
+    row = proposal_table(a, a.declare()).iloc[0]
+    assert row["kJ per 100 g"] == "892"
+    assert row["values below a limit"] == "836 to 947 kJ"
+
+
 def feed(declared, **more):
     row = {"sample_id": "f", "dry matter [%]": 88.0, "crude protein [% as fed]": 20.0, "crude fat [% as fed]": 6.0,
            "starch [% as fed]": 40.0, "sugars [% as fed]": 4.0, "starch_method": "polarimetric",

@@ -81,3 +81,9 @@ def test_a_feed_without_such_a_law_is_told(app):
     app.session_state["kept_law"] = None
     app.switch_page("energy/pages/declared.py").run()
     assert not app.exception
+
+
+def test_a_law_by_food_group_sums_the_ingredients_own(app):
+    app.selectbox(key="declared_law_human").set_value("us_ah74_specific").run()
+    assert not app.exception
+    assert "each by its own group's factors" in said(app)

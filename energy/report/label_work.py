@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 from html import escape
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Protocol
@@ -56,11 +57,30 @@ def laws(target: str) -> dict[str, str]:
     return {s.id: s.title for s in reader.systems().values() if declares(s) and target in s.targets}
 
 
+def bounds(samples: Samples) -> tuple[Samples, Samples] | None:
+    """The batch with every value below its limit at nothing, and at the limit itself; None where there is no such value."""
+    below = {c: b for c, b in samples.censored.items() if b.any()}
+    if not below:
+        return None
+    found = []
+    for times in (0.0, 2.0):  # such a value stands at half its limit
+        columns = {c: np.where(below[c], times * v, v) if c in below else v for c, v in samples.columns.items()}
+        found.append(replace(samples, columns=columns, memo=dict(samples.memo)))
+    return found[0], found[1]
+
+
 def judge(samples: Samples, target: str, law: str, **wishes: Any) -> list[Declared]:
     """Every sample under one law, or under all of a species or use. wishes : as for declare.declare. Raises WrongUse."""
     catalogue = reader.systems()
     chosen = list(laws(target)) if law == ALL else [law]
     return [declare(samples, catalogue[i], catalogue, **wishes) for i in chosen]
+
+
+def again(d: Declared, samples: Samples) -> Declared:
+    """The same law and amount for another batch of as many samples."""
+    per = d.per
+    serving = float(d.amount[0] * 100) if per == "serving" and len(d.amount) else None
+    return declare(samples, d.law, reader.systems(), per=per, serving=serving)
 
 
 def status(name: str) -> str:
@@ -149,8 +169,10 @@ def proposal_table(a: Holder, found: Sequence[Declared]) -> pd.DataFrame:
     import pandas as pd
 
     rows = []
+    ends = bounds(a.samples)
     for d in found:
         minds = warnings_of(d)
+        low, high = (None, None) if ends is None else (again(d, batch) for batch in ends)
         for i, sample in enumerate(a.samples.ids):
             if not np.isfinite(d.computed[d.energy.leading][i]):
                 continue
@@ -161,6 +183,10 @@ def proposal_table(a: Holder, found: Sequence[Declared]) -> pd.DataFrame:
                 )
             for unit in ("kJ", "kcal"):
                 row[f"sum in {unit}"] = d.sum_words(unit, i) if unit in d.computed else ""
+            if low is not None and high is not None:
+                first = d.energy.leading
+                texts = low.text(first, i), high.text(first, i)
+                row["values below a limit"] = "" if texts[0] == texts[1] else f"{texts[0]} to {texts[1]} {first}"
             rows.append(row | {"mind": minds[i]})
     return pd.DataFrame(rows)
 

@@ -8,11 +8,13 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from energy.assessment import demo_paths
+from energy.declare import Declared
 from energy.intake import read_samples
 from energy.quantities import DISPLAY_SCALE, dictionary
 from energy.recipe import Mixed, mix
 from energy.recipe_table import read_recipes
 from energy.report import label_work
+from energy.rounding import text_of
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -84,6 +86,9 @@ def labels(m: Mixed, law: str, **wishes: Any) -> pd.DataFrame:
              for name, batch in (("low", m.low), ("middle", m.samples), ("high", m.high))}  # fmt: skip
     rows = []
     for k, d in enumerate(found["middle"]):
+        if d.law.by_group:  # a product has no food group: each ingredient counts by the factors of its own
+            rows += _by_ingredient(m, d)
+            continue
         for p, product in enumerate(m.recipes.products):
             row = {"product": str(product), "law": d.law.title}
             for unit in ("kJ", "kcal"):
@@ -95,4 +100,18 @@ def labels(m: Mixed, law: str, **wishes: Any) -> pd.DataFrame:
             first = d.energy.leading
             row["the sum"] = d.sum_words(first, p) if np.isfinite(d.computed[first][p]) else ""
             rows.append(row)
-    return pd.DataFrame(rows)
+    return pd.DataFrame(rows).fillna("")
+
+
+def _by_ingredient(m: Mixed, d: Declared) -> list[dict[str, str]]:
+    value, u = m.energy_of(d.law)
+    unit, size = ("kJ", 100.0) if d.energy.leading == "kJ" else ("kcal", 100 / 4.184)
+    rows = []
+    for p, product in enumerate(m.recipes.products):
+        figure = value[p] * size * d.amount[p]
+        known = np.isfinite(figure)
+        text = text_of(d.rules.rounding_set, f"energy_{unit}", float(figure)) if known else ""
+        told = (f"sum over the ingredients, each by its own group's factors: {figure:.5g} {unit}, u {u[p] * size * d.amount[p]:.2g}" if known else
+                "an ingredient has no food group, or fat came or went in cooking")  # fmt: skip
+        rows.append({"product": str(product), "law": d.law.title, f"to print, {unit}": text, "the sum": told})
+    return rows
