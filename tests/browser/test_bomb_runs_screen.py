@@ -40,6 +40,8 @@ def test_a_sheet_of_one_s_own_to_its_corrected_rise(page, tmp_path):
     page.get_by_text("Load your own run sheet").click()
     sheets = page.locator('input[type="file"]')
     sheets.nth(1).set_input_files({"name": "t.csv", "mimeType": "text/csv", "buffer": READINGS.encode()})
+    expect(page.get_by_text("t.csv").first).to_be_visible(timeout=60_000)  # a second file sent meanwhile would be lost
+    ready(page, "Bomb runs")
     sheets.nth(0).set_input_files({"name": "own.csv", "mimeType": "text/csv", "buffer": SHEET})
     # by hand: no drift on either side, 23.75 - 22.00; (10000 x 1.75 - 50) / 0.95 = 18368 J/g
     expect(page.get_by_text("1.7500 K, u", exact=False)).to_be_visible(timeout=60_000)

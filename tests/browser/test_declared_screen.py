@@ -33,6 +33,8 @@ def test_rules_stand_with_their_place_and_caution(page, tmp_path):
 def test_a_recipe_with_an_unknown_ingredient_is_told(page, tmp_path):
     files = page.locator('input[type="file"]')
     files.nth(0).set_input_files({"name": "r.csv", "mimeType": "text/csv", "buffer": RECIPE})
+    expect(page.get_by_text("r.csv").first).to_be_visible(timeout=60_000)  # a second file sent meanwhile would be lost
+    ready(page, "Declared values")
     files.nth(1).set_input_files({"name": "i.csv", "mimeType": "text/csv", "buffer": PARTS})
     expect(page.get_by_text("the ingredient has no row in the table of compositions", exact=False)).to_be_visible(
         timeout=60_000
