@@ -313,8 +313,9 @@ def _run(samples: Samples, plan: Plan, rows: np.ndarray | None, blocks: Blocks) 
     leaves = [leaf(samples, name) for name in plan.inputs]
     codes = samples.memo.get("group_codes")
     contributions = [_contributions(samples, status) for status in plan.status]
-    outside = [key for key in plan.outputs if key[0].startswith(("amount", "domain"))]
+    outside = {key for key in plan.outputs if key[0].startswith(("amount", "domain"))}
     spare = {key: np.empty(min(n, CHUNK)) for key in outside} if rows is None else {}
+    arrays = {name: getattr(blocks, name) for name in ("value", "u", *PAIR_OUTPUTS)}
     for low in range(0, n, CHUNK):
         high = min(low + CHUNK, n)
         here: Any = slice(low, high) if rows is None else rows[low:high]
@@ -322,7 +323,10 @@ def _run(samples: Samples, plan: Plan, rows: np.ndarray | None, blocks: Blocks) 
             take(column, name, plan.parameters, here, codes) for column, name in zip(leaves, plan.inputs, strict=True)
         ]
         direct = rows is None
-        out = [_target(blocks, key, here, direct, spare, high - low) for key in plan.outputs]
+        if direct:
+            out = [spare[key][: high - low] if key in outside else arrays[key[0]][key[1], here] for key in plan.outputs]
+        else:
+            out = [np.empty(high - low) for _ in plan.outputs]
         plan.run(inputs, out)
         computed = dict(zip(plan.outputs, out, strict=True))
         if not direct:
@@ -335,17 +339,6 @@ def _run(samples: Samples, plan: Plan, rows: np.ndarray | None, blocks: Blocks) 
             if ("at_heats", q) not in computed:
                 for name in PAIR_OUTPUTS:
                     getattr(blocks, name)[q, here] = np.nan
-
-
-def _target(
-    blocks: Blocks, key: tuple[str, int], here: Any, direct: bool, spare: dict[tuple[str, int], np.ndarray], n: int
-) -> np.ndarray:
-    if key in spare:
-        return spare[key][:n]
-    if direct and not key[0].startswith(("amount", "domain")):
-        array: np.ndarray = getattr(blocks, key[0])[key[1], here]
-        return array
-    return np.empty(n)
 
 
 def _contributions(samples: Samples, status: SystemStatus) -> list[np.ndarray]:

@@ -61,7 +61,9 @@ def leaf(samples: Samples, name: str) -> np.ndarray | None:
         return None
     if name.startswith("U:"):
         column = name[2:].removesuffix("?")
-        array = samples.u.get(column, np.full(len(samples), np.nan))
+        array = samples.u.get(column)
+        if array is None:
+            array = np.full(len(samples), np.nan)
         return _filled(samples, "U:" + column, array, dictionary()[column].absent_u) if name.endswith("?") else array
     if name.endswith("?"):
         column = name[:-1]
