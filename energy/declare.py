@@ -31,7 +31,7 @@ from energy.rounding import Floats
 from energy.samples import Samples
 
 UNITS = ("kJ", "kcal")
-PER_WORDS = {"100g": "100 g", "100ml": "100 ml", "serving": "a serving"}
+PER_WORDS = {"100g": "100 g", "100ml": "100 ml", "serving": "serving"}
 #: what is said where a guard band is put on top of limits that hold measurement uncertainty already
 TWICE = ("the law's tolerance contains measurement uncertainty already: a guard band on top counts it twice and rejects "
          "lawful labels")  # fmt: skip
@@ -274,10 +274,12 @@ def _propagated(d: Declared, unit: str, tolerance_set: str) -> tuple[Floats, Flo
     below, above, widest = np.zeros(n), np.zeros(n), np.zeros(n)
     for quantity, k in d.coefficient[unit].items():
         printed = np.broadcast_to(d.label.printed[quantity], (n,)) / scale
+        # an absent nutrient has no tolerance to use up
+        if not np.any(np.nan_to_num(printed) > 0):
+            continue
         lower, upper = label_tolerance(tolerance_set, quantity, printed, d.rules.rounding_set)
         down = np.where(np.isfinite(lower), printed - lower, 0.0) * np.abs(k) * scale
         up = np.where(np.isfinite(upper), upper - printed, 0.0) * np.abs(k) * scale
-        # an absent nutrient has no tolerance to use up
         present = np.nan_to_num(printed) > 0
         below, above = below + np.where(present, down, 0.0) ** 2, above + np.where(present, up, 0.0) ** 2
         widest = widest + np.where(present, np.maximum(up, down), 0.0)

@@ -232,6 +232,17 @@ def test_a_poultry_feed_is_judged_by_its_law():
     assert (line["verdict"], feed(11.0)["verdict"]) == ("within", "outside")
 
 
+def test_a_compound_for_pigs_has_the_asymmetric_limits_of_feed_law():
+    """Regulation (EC) 767/2009, Annex IV: 5 % below and 10 % above, where no official method sets a tolerance."""
+    columns = {"dry_matter": np.array([0.88]), "crude_protein": np.array([0.17]), "crude_fat": np.array([0.04]),
+               "crude_fibre": np.array([0.045]), "starch": np.array([0.42]), "sugars": np.array([0.04]), "ash": np.array([0.05])}  # fmt: skip
+    samples = Samples.from_arrays(columns, target="growing_pig")
+    samples.memo["declared"] = {"kJ": np.array([1300.0])}
+    d = judged("gfe_2008_me_compound", samples)
+    assert (d.lower[0], d.upper[0]) == (pytest.approx(1300 * 0.95), pytest.approx(1300 * 1.10))
+    assert "fallback" in d.rule.words
+
+
 TABLE = ("sample_id,protein [g/100 g as is],fat [g/100 g as is],moisture [%],available carbohydrate [g/100 g as is],"
          "total dietary fibre [g/100 g as is],ash [g/100 g as is],declared energy [kJ/100 g],declared energy [kcal/100 g]\n"
          "b,9.6,2.4,40.0,39.6,7.1,1.3,982,200\n")  # fmt: skip

@@ -220,7 +220,7 @@ def rules_table(found: Sequence[Declared]) -> pd.DataFrame:
 def text(a: Holder, found: Sequence[Declared]) -> str:
     """For the terminal: the laws side by side where there are several, then each sample of a single law."""
     if not found:
-        return "No law of this species or use is a sum of factors: there is nothing to declare by."
+        return "No law at hand has a formula for this species or use: there is nothing to declare by."
     if len(found) > 1:
         return f"{_columns(side_by_side(a, found))}\n\n{_rules_text(found)}"
     d = found[0]
