@@ -165,7 +165,7 @@ def label_grams(grams: Mapping[str, Floats], rule_set: str, free_claim: bool = F
         ruled = bool(rounding.rules(rule_set, quantity))
         amount = np.where(amount < 0, np.nan, amount)
         found.ruled[quantity] = ruled
-        if not ruled:
+        if not ruled or not amount.any():  # of what no sample holds, every rule prints nought
             found.printed[quantity] = found.low[quantity] = found.high[quantity] = rounding.tidy(amount)
             continue
         printed = rounding.rounded(rule_set, quantity, amount, free_claim).value

@@ -22,6 +22,9 @@ Floats = NDArray[np.float64]
 #: significant digits a value is read with, and the most decimals it can then have in 64-bit whole numbers
 DIGITS = 12
 MOST_DECIMALS = 17
+#: powers of ten, exact in both kinds of number; looking one up is several times as fast as raising ten
+TENS = np.array([10**k for k in range(19)], dtype=np.int64)
+FLOAT_TENS = TENS.astype(np.float64)
 
 
 @dataclass(frozen=True)
@@ -108,11 +111,12 @@ def decimal_parts(values: Floats) -> tuple[NDArray[np.int64], NDArray[np.int64]]
 
     Values below 1e-6 keep seventeen decimals; NaN and infinite values come as 0.
     """
-    size = np.abs(np.where(np.isfinite(values), values, 0.0))
+    known = np.where(np.isfinite(values), values, 0.0)
+    size = np.abs(known)
     with np.errstate(divide="ignore"):
         exponent = np.where(size > 0, np.floor(np.log10(size)), 0.0)
     k = np.clip(DIGITS - 1 - exponent, 0, MOST_DECIMALS).astype(np.int64)
-    mantissa = np.rint(np.where(np.isfinite(values), values, 0.0) * 10.0**k)
+    mantissa = np.rint(known * FLOAT_TENS[k])
     return mantissa.astype(np.int64), k
 
 
@@ -121,7 +125,7 @@ def tidy(values: ArrayLike) -> Floats:
     x = np.asarray(values, dtype=np.float64)
     mantissa, k = decimal_parts(x)
     # a whole number below 2**53 over a power of ten is the float nearest to that decimal
-    return np.where(np.isfinite(x), mantissa / 10.0**k, x)
+    return np.where(np.isfinite(x), mantissa / FLOAT_TENS[k], x)
 
 
 def _whole(step: float) -> tuple[int, int]:
@@ -141,7 +145,7 @@ def nearest(values: ArrayLike, step: float, tie: str = "half_up") -> Floats:
     whole, decimals = _whole(step)
     # mantissa/10**k : whole/10**decimals, as one fraction of whole numbers
     above = mantissa * 10**decimals
-    below = whole * np.power(np.int64(10), k)
+    below = whole * TENS[k]
     count = (2 * above + below) // (2 * below)
     if tie == "half_even":
         count -= ((2 * above + below) % (2 * below) == 0) & (count % 2 == 1)
@@ -154,9 +158,9 @@ def significant(values: ArrayLike, digits: int) -> Floats:
     mantissa, k = decimal_parts(x)
     length = np.where(mantissa > 0, np.floor(np.log10(np.maximum(mantissa, 1).astype(float))) + 1, digits)
     drop = np.maximum(length.astype(np.int64) - digits, 0)
-    unit = np.power(np.int64(10), drop)
+    unit = TENS[drop]
     kept = (2 * mantissa + unit) // (2 * unit) * unit
-    return np.where(np.isfinite(x), kept / 10.0**k, np.nan)
+    return np.where(np.isfinite(x), kept / FLOAT_TENS[k], np.nan)
 
 
 @dataclass(frozen=True)
