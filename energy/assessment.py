@@ -284,10 +284,17 @@ class Assessment:
         """Declared values under the laws of this assessment, per 100 g as is, by simple acceptance; see `declare`."""
         return views.declared(self.declare(), self.samples.ids)
 
-    def declare(self, **wishes: Any) -> list[Declared]:
-        """The same as arrays, one per law. wishes : per, serving, decision, coverage, lot, tolerance_set of declare.declare."""
-        laws = [s for s in self.choice.systems if declares(s)]
-        return [declare(self.samples, s, self.catalogue, **wishes) for s in laws]
+    def declared_of(self, sample_id: str) -> pd.DataFrame:
+        """The rows of `declared` of one sample, made alone."""
+        return views.declared(self.declare(sample_id), np.array([sample_id], dtype=object))
+
+    def declare(self, sample_id: str | None = None, **wishes: Any) -> list[Declared]:
+        """The same as arrays, one per law, of the batch or of one sample.
+
+        wishes : per, serving, decision, coverage, lot, tolerance_set of declare.declare.
+        """
+        samples = self.samples if sample_id is None else self.samples.take(np.array([self.index(sample_id)]))
+        return [declare(samples, s, self.catalogue, **wishes) for s in self.choice.systems if declares(s)]
 
     @cached_property
     def balances(self) -> pd.DataFrame:

@@ -75,6 +75,7 @@ class Declared:
     from_label: dict[str, Floats] = field(default_factory=dict)
     spread_low: dict[str, Floats] = field(default_factory=dict)
     spread_high: dict[str, Floats] = field(default_factory=dict)
+    rounded: dict[str, rounding.Rounded] = field(default_factory=dict)
     printed: dict[str, Floats] = field(default_factory=dict)
     declared: dict[str, Floats] = field(default_factory=dict)
     coefficient: dict[str, dict[str, Floats]] = field(default_factory=dict)
@@ -101,13 +102,14 @@ class Declared:
 
     def rounding_rule(self, unit: str, i: int) -> rounding.Rule | None:
         """The rule that rounds one figure; None where none was found."""
-        if not np.isfinite(self.computed[unit][i]) or not self.rules.rounding_set:
-            return None
-        found = rounding.rounded(self.rules.rounding_set, f"energy_{unit}", self.computed[unit][i : i + 1])
-        return None if found.row[0] < 0 else found.rules[int(found.row[0])]
+        found = self.rounded.get(unit)
+        return None if found is None or found.row[i] < 0 else found.rules[int(found.row[i])]
 
     def text(self, unit: str, i: int) -> str:
         """The figure as the law prints it; with '(no rule)' where none was found."""
+        rule = self.rounding_rule(unit, i)
+        if rule is not None and rule.kind == "step" and not rule.printed and rule.step >= 1:
+            return f"{self.rounded[unit].value[i]:.0f}"
         return rounding.text_of(self.rules.rounding_set, f"energy_{unit}", float(self.computed[unit][i]))
 
     def sum_words(self, unit: str, i: int) -> str:
@@ -170,7 +172,11 @@ def declare(
             d.from_label[unit] = np.broadcast_to(energy_of(d.label.printed, k), (n,)).copy()
             low, high = spread(d.label, k)
             d.spread_low[unit], d.spread_high[unit] = np.broadcast_to(low, (n,)), np.broadcast_to(high, (n,))
-        d.printed[unit] = _printed(rules.rounding_set, unit, d.computed[unit])
+        d.printed[unit] = np.full(n, np.nan)
+        if rounding.rules(rules.rounding_set, f"energy_{unit}"):
+            shown = np.where(d.computed[unit] < 0, np.nan, d.computed[unit])
+            d.rounded[unit] = rounding.rounded(rules.rounding_set, f"energy_{unit}", shown)
+            d.printed[unit] = d.rounded[unit].value
     _convert_rest(d)
     stated: Mapping[str, Floats] = samples.memo.get("declared", {})
     for unit in UNITS:
@@ -199,12 +205,6 @@ def _amount(samples: Samples, per: str, serving: float | None) -> Floats:
             raise WrongUse("Energy per 100 ml needs a density.", "Add density [g/ml].")
         return np.asarray(density, dtype=float)
     return np.ones(n)
-
-
-def _printed(rule_set: str, unit: str, energy: Floats) -> Floats:
-    if not rounding.rules(rule_set, f"energy_{unit}"):
-        return np.full(energy.shape, np.nan)
-    return rounding.rounded(rule_set, f"energy_{unit}", np.where(energy < 0, np.nan, energy)).value
 
 
 def _convert_rest(d: Declared) -> None:

@@ -357,9 +357,10 @@ def _declared_words(a: Assessment, row: int) -> str:
     if not said:
         return "none is declared"
     told = f"declared {' and '.join(said)} as is"
-    if a.declared.empty:
+    found = a.declared_of(str(a.samples.ids[row]))
+    if found.empty:
         return f"{told}; no law is chosen that could judge it"
-    for line in a.declared[a.declared["sample_id"] == a.samples.ids[row]].itertuples():
+    for line in found.itertuples():
         told += f". {_judged_words(line)}"
     return told
 

@@ -114,7 +114,10 @@ class Mixed:
         )
         u = blocks.u[0] * basis_factor(self.ingredients, blocks.basis, "as_is")
         # water and salt have no food group, and no energy by any
-        bears = np.sum([x for c, (x, _) in self._contents.items() if c not in ("moisture", "ash", "gross_energy")], axis=0) > 0
+        bears = (
+            np.sum([x for c, (x, _) in self._contents.items() if c not in ("moisture", "ash", "gross_energy")], axis=0)
+            > 0
+        )
         value, u = np.where(bears, value, 0.0), np.where(bears, u, 0.0)
         used = self.shares > 0
         lacking = (used & np.isnan(value)).any(axis=1) | (np.abs(self.fat_lost) > 1e-12)
