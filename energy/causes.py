@@ -92,6 +92,9 @@ def find(
         logs, plainly, size = np.full(shape, -np.inf), np.full(shape, -np.inf), np.zeros(shape)
         measured, computed, closes = np.empty(shape), np.empty(shape), np.zeros(shape, dtype=bool)
         for j, e in enumerate(tried):
+            if not np.any(e.applies):
+                measured[j], computed[j] = m.measured, m.computed
+                continue
             plainly[j], logs[j], size[j], measured[j], computed[j], closes[j] = _weigh(m, e, low, high)
         top = np.maximum(logs.max(axis=0, initial=-np.inf), plain)
         shares, none = np.exp(logs - top), np.exp(plain - top)
