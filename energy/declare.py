@@ -13,7 +13,16 @@ import numpy as np
 
 from energy import rounding
 from energy.catalogue.records import System
-from energy.conformity import DECISION_RULES, NO_RULE, NOT_JUDGED, OUTCOMES, decide, lot_uncertainty, probability_within
+from energy.conformity import (
+    DECISION_RULES,
+    NO_RULE,
+    NOT_JUDGED,
+    OUTCOMES,
+    OUTSIDE,
+    decide,
+    lot_uncertainty,
+    probability_within,
+)
 from energy.label_energy import (
     LabelEnergy,
     LabelGrams,
@@ -86,6 +95,8 @@ class Declared:
     outcome: np.ndarray = field(default_factory=lambda: np.empty(0, dtype=np.int8))
     widest: Floats = field(default_factory=lambda: np.empty(0))
     flips: np.ndarray = field(default_factory=lambda: np.empty(0, dtype=bool))
+    #: (n,) declared in both units, and the one that is not judged lies outside its own limits
+    other_outside: np.ndarray = field(default_factory=lambda: np.empty(0, dtype=bool))
     claim_flips: dict[Claim, np.ndarray] = field(default_factory=dict)
     warnings: list[str] = field(default_factory=list)
     twin: System | None = None
@@ -246,6 +257,11 @@ def _judge(d: Declared, coverage: float, lot: Lot | None, tolerance_set: str | N
         for target, values in ((d.lower, lower), (d.upper, upper), (d.widest, widest), (d.probability, chance)):
             target[here] = np.broadcast_to(values, (n,))[here]
         d.outcome[here] = np.where(np.isnan(value) & (d.rule.kind != "none"), NOT_JUDGED, outcome)[here]
+    both = np.isfinite(d.declared[first]) & np.isfinite(d.declared[other])
+    d.other_outside = np.zeros(n, dtype=bool)
+    if both.any() and other in d.computed and d.rule.kind != "none":
+        lower, upper, _ = _limits(d, other, tolerance_set)
+        d.other_outside = both & (decide("simple", d.computed[other], np.zeros(n), lower, upper) == OUTSIDE)
 
 
 def _limits(d: Declared, unit: str, tolerance_set: str | None) -> tuple[Floats, Floats, Floats]:
@@ -329,6 +345,10 @@ def warnings_of(d: Declared) -> list[str]:
         told = list(d.warnings) if np.isfinite(d.computed[d.energy.leading][i]) else []
         if d.flips[i]:
             told.append("computed from the grams as printed the verdict would be another: rounding decides it")
+        if d.other_outside[i]:
+            first, other = str(d.judged[i]), "kcal" if d.judged[i] == "kJ" else "kJ"
+            told.append(f"the verdict is about the {first} declared; the {d.declared[other][i]:.6g} {other} beside it lie outside "
+                        f"the limits of {other}")  # fmt: skip
         for claim, flips in d.claim_flips.items():
             if flips[i]:
                 told.append(f"rounding decides whether the claim '{claim.claim}' ({claim.at_most:g} {claim.unit}, {claim.source}, "

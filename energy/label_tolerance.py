@@ -179,7 +179,7 @@ def energy_rule(system: System, law: LabelLaw, tolerance_set: str | None = None)
         row = next(r for r in laws() if r["law"] == law.feed and r["constituent"] == "energy_value")
         return EnergyRule("feed", "feed law as a fallback: 5 % below and 10 % above the declared value, only where no official "
                           "method sets a tolerance", "the feed as checked", "yes", row["source"], row["locator"],
-                          row["source_status"])  # fmt: skip
+                          weakest([row["source_status"], law.tolerance_status or row["source_status"]]))  # fmt: skip
     rows = tolerance_rows(name, "energy")
     if not rows:
         return EnergyRule("none", "no tolerance was found for this law")

@@ -9,7 +9,7 @@ from scipy import stats
 
 import energy
 from energy.catalogue.reader import systems
-from energy.declare import Lot, declare, outcome_words
+from energy.declare import Lot, declare, outcome_words, warnings_of
 from energy.problems import WrongUse
 from energy.samples import Samples
 
@@ -80,6 +80,15 @@ def test_probability_is_that_of_the_normal_law_by_hand():
     spread = d.u["kcal"][0]
     assert d.probability[0] == pytest.approx(stats.norm.cdf((240 - 246.8) / spread), rel=1e-9)
     assert 0 < d.probability[0] < 0.5
+
+
+def test_the_unit_that_is_not_judged_is_told_when_it_lies_outside():
+    """982 kJ is what the sum gives; 300 kcal beside 232.6 is beyond any limit propagated from the nutrients (some 37 kcal)."""
+    d = judged("eu_1169_2011", bread(kj=[982, 982], kcal=[300, 233], n=2))
+    assert list(outcome_words(d)) == ["within", "within"]
+    assert list(d.other_outside) == [True, False]
+    assert "300 kcal" in warnings_of(d)[0]
+    assert "kcal" not in warnings_of(d)[1]
 
 
 def test_no_rule_is_said_where_none_was_found():

@@ -90,6 +90,7 @@ def test_feed_law_is_asymmetric_and_a_fallback():
     lower, upper = feed_limits(systems()[law], label_law(law), np.array([1000.0]))
     assert (lower[0], upper[0]) == (950, 1100)
     assert "fallback" in rule(law).words
+    assert rule(law).source_status == "memory_high"  # the sizes were read; that they are a fallback is recalled
 
 
 def test_poultry_has_an_absolute_tolerance():
