@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from energy import causes, figures, reasons
+from energy import causes, figures, reasons, scores
 from energy.catalogue.records import SOURCE_STATUS, System
 from energy.compare import VERDICTS
 from energy.declare import PER_WORDS, Declared, outcome_words, proposals, rule_words, warnings_of
@@ -32,7 +32,7 @@ VERDICT_COLUMNS = (
     "sample_id", "target", "stage", "bomb_system", "composition_system", "bomb", "composition", "difference",
     "difference_percent", "measurement_part", "heats_part", "convention_part", "u_difference", "limit_lower",
     "limit_upper", "coverage", "verdict", "reason", "probable_cause", "next_measurement", "unit", "basis",
-    "food_name", "u_measurement_part",
+    "food_name", "u_measurement_part", "zeta", "en",
 )  # fmt: skip
 DECLARED_COLUMNS = (
     "sample_id", "law", "declared_kj", "declared_kcal", "computed_kj", "computed_kcal", "rounded_kj", "rounded_kcal",
@@ -179,6 +179,7 @@ def _pair_table(a: Assessment, p: int, rows: np.ndarray, factor: np.ndarray | fl
     cause, following = a.causes
     talk = reasons.pair_reasons(a, p, rows)
     n = len(rows)
+    u = np.hypot(b.u_measurement[p, rows], b.u_model[p, rows])
     return pd.DataFrame(
         {
             "sample_id": a.samples.ids[rows],
@@ -204,7 +205,10 @@ def _pair_table(a: Assessment, p: int, rows: np.ndarray, factor: np.ndarray | fl
             "unit": a.shown.unit,
             "basis": a.shown.basis,
             "food_name": a.samples.text.get("name", np.full(len(a.samples), "", dtype=object))[rows],
-            "u_measurement_part": np.hypot(b.u_measurement[p, rows], b.u_model[p, rows]) * k,
+            "u_measurement_part": u * k,
+            # u is that of the part itself, so that what both routes share has cancelled; En at k = 2
+            "zeta": scores.zeta_of_difference(b.measurement[p, rows], u),
+            "en": scores.zeta_of_difference(b.measurement[p, rows], 2 * u),
         },
         index=range(n),
     )

@@ -1,10 +1,12 @@
 """Verdict words and limits, by hand."""
 
 import numpy as np
+import pandas as pd
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+import energy
 from energy.compare import VERDICTS, coverage_of, read_limit, verdict_codes
 from energy.problems import WrongUse
 
@@ -85,3 +87,26 @@ def test_few_degrees_of_freedom_widen_the_interval():
 def test_odd_limits_are_refused(text):
     with pytest.raises(WrongUse):
         read_limit(text)
+
+
+def near_infrared(origin, bomb):
+    row = {"sample_id": "s", "moisture [%]": 10.0, "protein [g/100 g as is]": 12.0, "fat [g/100 g as is]": 5.0, "ash [g/100 g as is]": 2.0,
+           "u(moisture) [%]": 0.1, "u(protein) [g/100 g as is]": 0.1, "u(fat) [g/100 g as is]": 0.1, "u(ash) [g/100 g as is]": 0.05,
+           "gross energy [MJ/kg as is]": bomb, "u(gross energy) [MJ/kg as is]": 0.03, "origin": origin}  # fmt: skip
+    return energy.assess(pd.DataFrame([row]), target="human", limit="12%").verdicts.iloc[0]
+
+
+#: 5.65 x 12 + 9.40 x 5 + 4.15 x 71 kcal per 100 g
+COMPUTED = (5.65 * 0.12 + 9.40 * 0.05 + 4.15 * 0.71) * 4.184
+
+
+@pytest.mark.parametrize("bomb", [COMPUTED, 1.3 * COMPUTED])
+def test_a_near_infrared_composition_caps_the_verdict_at_screening(bomb):
+    assert near_infrared("nir", bomb)["verdict"] == "screening"
+    assert near_infrared("measured", bomb)["verdict"] in ("concordant", "discordant")
+
+
+def test_zeta_and_en_are_the_part_over_its_u():
+    v = near_infrared("measured", 1.05 * COMPUTED)
+    assert v["zeta"] == pytest.approx(v["measurement_part"] / v["u_measurement_part"])
+    assert v["en"] == pytest.approx(v["zeta"] / 2)
