@@ -304,3 +304,17 @@ def test_a_lot_needs_both_of_its_scatters(file, capsys):
     code, _, err = terminal(capsys, "declare", file, "--law", "eu_1169_2011", "--sampling", "0.02")
     assert code == 2
     assert "--production" in err
+
+
+def test_evidence_holds_the_declared_values(file, tmp_path):
+    import json
+
+    import openpyxl
+
+    a = energy.assess(str(file), target="human", law="eu_1169_2011")
+    a.save(tmp_path / "e.xlsx")
+    a.save(tmp_path / "e.json")
+    sheet = openpyxl.load_workbook(tmp_path / "e.xlsx")["declared"]
+    heads = [cell.value for cell in sheet[1]]
+    assert sheet.cell(2, heads.index("verdict") + 1).value == "within"
+    assert json.loads((tmp_path / "e.json").read_text())["declared"][0]["rounded_kj"] == 982

@@ -107,9 +107,9 @@ def problem_table(assessment: Assessment) -> pd.DataFrame:
 
 
 def _workbook(assessment: Assessment, path: Path) -> None:
-    sheets = {"verdicts": assessment.verdicts, "results": assessment.results, "inputs": assessment.inputs(), "problems": problem_table(assessment),
+    sheets = {"verdicts": assessment.verdicts, "declared": assessment.declared, "results": assessment.results, "inputs": assessment.inputs(), "problems": problem_table(assessment),
               "sources": assessment.sources, "balances": assessment.balances}  # fmt: skip
-    workbook(sheets, path)
+    workbook({name: sheet for name, sheet in sheets.items() if name != "declared" or len(sheet)}, path)
 
 
 def workbook(sheets: dict[str, pd.DataFrame], path: Path) -> None:
@@ -146,7 +146,7 @@ def _cell(sheet: object, r: int, k: int, value: object) -> None:
 def _json(assessment: Assessment, path: Path) -> None:
     import json
 
-    tables = {"results": assessment.results, "verdicts": assessment.verdicts, "problems": problem_table(assessment),
+    tables = {"results": assessment.results, "verdicts": assessment.verdicts, "declared": assessment.declared, "problems": problem_table(assessment),
               "sources": assessment.sources}  # fmt: skip
     body = ",\n".join(f"{json.dumps(n)}: {t.to_json(orient='records', double_precision=15)}" for n, t in tables.items())
     path.write_text("{" + body + "}\n", encoding="utf-8")
