@@ -31,7 +31,8 @@ NEEDS = {
     "fibre_twice": "available_carbohydrate", "fibre_left_out": "total_dietary_fibre", "ash_in_carbohydrate": "available_carbohydrate",
     "low_molecular_fibre": "available_carbohydrate", "nitrogen_as_protein": "crude_protein", "urea_as_protein": "crude_protein",
     "ether_extract": "crude_fat", "decimal_crude_fat": "crude_fat", "decimal_crude_protein": "crude_protein",
-    "decimal_ash": "ash",
+    "decimal_ash": "ash", "protein_as_nitrogen": "crude_protein", "nitrogen_factor": "crude_protein",
+    "fibre_outside": "carbohydrate_by_difference",
 }  # fmt: skip
 
 
@@ -148,8 +149,40 @@ def plant(kind, s, rng):
         return factor(1 / d, on(s, "gross_energy", "as_is") & (d < 0.95))
     if kind == "as_is_as_dry_matter":
         return factor(d, on(s, "gross_energy", "dry_matter") & (d < 0.95))
-    if kind == "as_analysed_as_dry_matter":
-        return factor(1 - residual, on(s, "gross_energy", "dry_matter") & (residual > 0.02))
+    if kind == "as_analysed_as_dry_matter":  # the powder's residual moisture is known, and was not used
+        where = on(s, "gross_energy", "dry_matter")
+        left = rng.uniform(0.04, 0.09, n)
+        s.columns["residual_moisture"] = np.where(where, left, residual)
+        s.fill_default_u()
+        return factor(1 - left, where)
+    if kind == "protein_as_nitrogen":
+        nitrogen = np.where(
+            np.isfinite(column(s, "nitrogen")), column(s, "nitrogen"), column(s, "crude_protein") / 6.25
+        )
+        where = np.isfinite(nitrogen) & ~np.isfinite(column(s, "nitrogen_free_extract"))
+        where &= np.isnan(column(s, "nitrogen_factor")) | (column(s, "nitrogen_factor") == 6.25)
+        stated = s.basis["nitrogen"] if "nitrogen" in s.columns else s.basis["crude_protein"]
+        s.columns["nitrogen"] = np.where(where, 6.25 * nitrogen, column(s, "nitrogen"))
+        s.basis["nitrogen"] = stated.copy()
+        s.columns["crude_protein"] = np.where(where, np.nan, s.columns["crude_protein"])
+        s.fill_default_u()
+        return where
+    if kind == "nitrogen_factor":
+        from energy.catalogue.tables import food_groups
+
+        groups = s.text.get("food_group", np.full(n, "", dtype=object))
+        own = np.array([float(food_groups().get(str(g), {}).get("nitrogen_factor") or np.nan) for g in groups])
+        where = np.isfinite(own) & (np.abs(own - 6.25) > 0.05) & np.isnan(column(s, "nitrogen_factor"))
+        where &= np.isfinite(column(s, "crude_protein")) & ~np.isfinite(column(s, "nitrogen"))
+        s.columns["crude_protein"] = np.where(
+            where, s.columns["crude_protein"] * own / 6.25, s.columns["crude_protein"]
+        )
+        return where
+    if kind == "fibre_outside":
+        fibre, difference = column(s, "total_dietary_fibre"), column(s, "carbohydrate_by_difference")
+        where = (fibre > 0.02) & (difference > fibre) & ~np.isfinite(column(s, "available_carbohydrate"))
+        s.columns["carbohydrate_by_difference"] = np.where(where, difference - fibre, difference)
+        return where
     if kind == "as_analysed_as_is":
         return factor(
             (1 - np.where(np.isfinite(residual), residual, 0.04)) / d, on(s, "gross_energy", "as_is") & (d < 0.8)
@@ -291,8 +324,8 @@ def plant(kind, s, rng):
 KINDS = (
     "kcal_as_kJ", "kJ_as_kcal", "calorie_other_way", "decimal_up", "decimal_down", "dry_matter_as_is", "as_is_as_dry_matter",
     "as_analysed_as_dry_matter", "as_analysed_as_is", "composition_of_dry_matter_as_is", "composition_as_is_as_dry_matter",
-    "nitrogen_as_protein", "urea_as_protein", "powder_moisture_forgotten", "moisture_taken_up", "moisture_lost", "volatiles_lost",
-    "fibre_twice", "fibre_left_out", "low_molecular_fibre", "ash_in_carbohydrate", "incomplete_combustion", "acid_left_out",
+    "nitrogen_as_protein", "protein_as_nitrogen", "nitrogen_factor", "urea_as_protein", "powder_moisture_forgotten", "moisture_taken_up", "moisture_lost", "volatiles_lost",
+    "fibre_twice", "fibre_outside", "fibre_left_out", "low_molecular_fibre", "ash_in_carbohydrate", "incomplete_combustion", "acid_left_out",
     "ether_extract", "carbonate", "decimal_crude_fat", "decimal_crude_protein", "decimal_ash", "swapped",
 )  # fmt: skip
 
