@@ -3,7 +3,6 @@
 from pathlib import Path
 
 import pytest
-from streamlit.testing.v1 import AppTest
 
 from energy.bomb.cautions import CAUTIONS
 
@@ -11,22 +10,11 @@ ROOT = Path(__file__).parent.parent
 
 
 @pytest.fixture
-def app(monkeypatch):
-    monkeypatch.chdir(ROOT)
-    at = AppTest.from_file(str(ROOT / "app.py"), default_timeout=60)
-    at.run()
-    at.switch_page("energy/pages/bomb_runs.py").run()
-    assert not at.exception
-    return at
+def app(open_screen):
+    return open_screen("bomb_runs")
 
 
-def said(at):
-    kinds = ("markdown", "warning", "error", "info", "caption", "subheader")
-    tables = [" ".join(map(str, table.value.to_numpy().ravel())) for table in (*at.table, *at.dataframe)]
-    return " ".join([*(str(e.value) for kind in kinds for e in at.get(kind)), *tables]).replace("\\", "")
-
-
-def test_the_demo_is_reduced_and_the_cautions_stand_on_the_screen(app):
+def test_the_demo_is_reduced_and_the_cautions_stand_on_the_screen(app, said):
     text = said(app)
     assert "Invented demo data" in text
     assert "wheat bran" in text
@@ -42,12 +30,12 @@ def test_the_budget_of_a_run_adds_up_on_the_screen(app):
     assert len(heats) == 5
 
 
-def test_a_rejected_run_says_why(app):
+def test_a_rejected_run_says_why(app, said):
     app.selectbox(key="run_choice").set_value("R05").run()
     assert "rejected, not corrected" in said(app)
 
 
-def test_periods_can_be_moved_and_found_again(app):
+def test_periods_can_be_moved_and_found_again(app, said):
     app.selectbox(key="run_choice").set_value("R01").run()
     before = app.slider(key="main_period_R01").value
     app.slider(key="main_period_R01").set_value((before[0], 15.0)).run()
@@ -59,7 +47,7 @@ def test_periods_can_be_moved_and_found_again(app):
     assert app.slider(key="main_period_R01").value == before
 
 
-def test_a_sheet_of_one_s_own_takes_the_place_of_the_demo(app):
+def test_a_sheet_of_one_s_own_takes_the_place_of_the_demo(app, said):
     sheet = b"run_id,sample_id,sample_mass [g],rise [K],heat_capacity [J/K]\n1,own bran,0.95,1.75,10000\n"
     app.file_uploader(key="runs_upload").set_value(("own.csv", sheet, "text/csv")).run()
     assert not app.exception
@@ -68,7 +56,7 @@ def test_a_sheet_of_one_s_own_takes_the_place_of_the_demo(app):
     assert "there is no thermogram to draw" in said(app)
 
 
-def test_a_sheet_that_cannot_be_used_shows_every_problem(app):
+def test_a_sheet_that_cannot_be_used_shows_every_problem(app, said):
     sheet = b"run_id,sample_mass,rise [J]\n1,0.95,1.75\n"
     app.file_uploader(key="runs_upload").set_value(("own.csv", sheet, "text/csv")).run()
     assert not app.exception
@@ -77,7 +65,7 @@ def test_a_sheet_that_cannot_be_used_shows_every_problem(app):
     assert "rise [J]" in text
 
 
-def test_the_gross_energies_are_put_beside_a_sample_table_and_taken_to_the_bench(app):
+def test_the_gross_energies_are_put_beside_a_sample_table_and_taken_to_the_bench(app, said):
     table = b"sample_id,crude protein [% DM]\nwheat bran,17\n009,20\n"
     app.file_uploader(key="beside_upload").set_value(("own.csv", table, "text/csv")).run()
     assert not app.exception

@@ -3,7 +3,6 @@
 from pathlib import Path
 
 import pytest
-from streamlit.testing.v1 import AppTest
 
 from energy.bomb.cautions import CAUTIONS
 
@@ -11,22 +10,11 @@ ROOT = Path(__file__).parent.parent
 
 
 @pytest.fixture
-def app(monkeypatch):
-    monkeypatch.chdir(ROOT)
-    at = AppTest.from_file(str(ROOT / "app.py"), default_timeout=60)
-    at.run()
-    at.switch_page("energy/pages/calorimeter.py").run()
-    assert not at.exception
-    return at
+def app(open_screen):
+    return open_screen("calorimeter")
 
 
-def said(at):
-    kinds = ("markdown", "warning", "error", "info", "caption", "subheader")
-    tables = [" ".join(map(str, table.value.to_numpy().ravel())) for table in (*at.table, *at.dataframe)]
-    return " ".join([*(str(e.value) for kind in kinds for e in at.get(kind)), *tables]).replace("\\", "")
-
-
-def test_the_cautions_stand_on_the_screen(app):
+def test_the_cautions_stand_on_the_screen(app, said):
     text = said(app)
     assert all(caution in text for caution in CAUTIONS)
 
@@ -39,7 +27,7 @@ def test_every_signal_has_its_reason(app):
     assert (calls == "◆ nothing").sum() == 9
 
 
-def test_held_results_and_the_due_date_are_told(app):
+def test_held_results_and_the_due_date_are_told(app, said):
     text = said(app)
     assert "2 results are held" in text
     assert "R360" in text
@@ -47,18 +35,18 @@ def test_held_results_and_the_due_date_are_told(app):
     assert "GB/T 213" in text
 
 
-def test_withdrawing_a_calibration_lists_its_runs(app):
+def test_withdrawing_a_calibration_lists_its_runs(app, said):
     app.selectbox(key="record_withdraw").set_value("cal 2025-03-31").run()
     assert not app.exception
     assert "Reduce them with another calibration" in said(app)
 
 
-def test_an_assigned_value_judges_the_first_runs_too(app):
+def test_an_assigned_value_judges_the_first_runs_too(app, said):
     app.text_input(key="record_material").set_value("house feed").run()
     app.number_input(key="record_value").set_value(17.30).run()
     assert not app.exception
     assert "MJ/kg assigned" in said(app)
 
 
-def test_check_substances_stand_with_their_source(app):
+def test_check_substances_stand_with_their_source(app, said):
     assert "NIST WebBook" in said(app)

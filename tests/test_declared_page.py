@@ -3,28 +3,16 @@
 from pathlib import Path
 
 import pytest
-from streamlit.testing.v1 import AppTest
 
 ROOT = Path(__file__).parent.parent
 
 
 @pytest.fixture
-def app(monkeypatch):
-    monkeypatch.chdir(ROOT)
-    at = AppTest.from_file(str(ROOT / "app.py"), default_timeout=60)
-    at.run()
-    at.switch_page("energy/pages/declared.py").run()
-    assert not at.exception
-    return at
+def app(open_screen):
+    return open_screen("declared")
 
 
-def said(at):
-    kinds = ("markdown", "warning", "error", "info", "caption", "subheader")
-    tables = [" ".join(map(str, table.value.to_numpy().ravel())) for table in (*at.table, *at.dataframe)]
-    return " ".join([*(str(e.value) for kind in kinds for e in at.get(kind)), *tables]).replace("\\", "")
-
-
-def test_a_verdict_carries_limit_place_and_how_it_is_known(app):
+def test_a_verdict_carries_limit_place_and_how_it_is_known(app, said):
     text = said(app)
     assert "licensed adviser" in text
     assert "✕ outside" in text
@@ -33,7 +21,7 @@ def test_a_verdict_carries_limit_place_and_how_it_is_known(app):
     assert "a bomb figure is evidence about the label, not the label" in text
 
 
-def test_the_sum_that_leads_to_a_figure_stands_there(app):
+def test_the_sum_that_leads_to_a_figure_stands_there(app, said):
     """Demo sample 002: 17 x 39.6 + 17 x 9.6 + 37 x 2.4 + 8 x 7.1 = 982 kJ; 4, 4, 9, 2 give 232.6 kcal."""
     text = said(app)
     assert "17 x 39.6 + 17 x 9.6 + 37 x 2.4 + 8 x 7.1 = 982 kJ" in text
@@ -49,18 +37,18 @@ def test_all_laws_side_by_side(app):
     assert row["fsanz_sch11"] == "○ no rule found"
 
 
-def test_a_guard_band_on_limits_that_hold_uncertainty_is_warned_of(app):
+def test_a_guard_band_on_limits_that_hold_uncertainty_is_warned_of(app, said):
     app.selectbox(key="declared_rule").set_value("guarded").run()
     assert "counts it twice" in said(app)
 
 
-def test_per_100_ml_without_density_is_asked_for(app):
+def test_per_100_ml_without_density_is_asked_for(app, said):
     app.selectbox(key="declared_per").set_value("100ml").run()
     assert not app.exception
     assert "density" in said(app)
 
 
-def test_a_lot_is_spoken_of_when_both_scatters_are_given(app):
+def test_a_lot_is_spoken_of_when_both_scatters_are_given(app, said):
     app.number_input(key="declared_sampling").set_value(3.0).run()
     assert "Both are needed" in said(app)
     app.number_input(key="declared_production").set_value(10.0).run()
@@ -83,7 +71,7 @@ def test_a_feed_without_such_a_law_is_told(app):
     assert not app.exception
 
 
-def test_a_law_by_food_group_sums_the_ingredients_own(app):
+def test_a_law_by_food_group_sums_the_ingredients_own(app, said):
     app.selectbox(key="declared_law_human").set_value("us_ah74_specific").run()
     assert not app.exception
     assert "each by its own group's factors" in said(app)
