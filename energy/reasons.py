@@ -374,6 +374,8 @@ def _judged_words(line: Any) -> str:
     if line.verdict == "no_rule":
         return f"{line.law}: {computed:.4g} {unit} computed; {line.rule}"
     limits = [f"{word} {x:.4g}" for word, x in (("at least", line.lower), ("at most", line.upper)) if np.isfinite(x)]
+    p = line.probability_within
+    chance = "over 0.999" if p > 0.999 else "under 0.001" if p < 0.001 else f"{p:.3f}"
     return (f"{line.law}: {computed:.4g} {unit} computed, {' and '.join(limits)} {unit} allowed ({line.rule}; {line.locator}, "
-            f"{SOURCE_STATUS.get(line.source_status, line.source_status)}): {line.verdict}, with a probability of "
-            f"{line.probability_within:.3g}. {line.bomb_words}")  # fmt: skip
+            f"{SOURCE_STATUS.get(line.source_status, line.source_status)}): {line.verdict}; the probability of lying within is {chance}. "
+            f"{line.bomb_words[:1].upper()}{line.bomb_words[1:]}")  # fmt: skip
