@@ -177,7 +177,7 @@ def _pair_table(a: Assessment, p: int, rows: np.ndarray, factor: np.ndarray | fl
     shift = shown_value - value * k
     codes = a.verdict[p, rows]
     cause, following = a.causes
-    talk = reasons.pair_reasons(a, p, rows)
+    told = reasons.pair_reasons(a, p, rows)
     n = len(rows)
     u = np.hypot(b.u_measurement[p, rows], b.u_model[p, rows])
     return pd.DataFrame(
@@ -199,7 +199,7 @@ def _pair_table(a: Assessment, p: int, rows: np.ndarray, factor: np.ndarray | fl
             "limit_upper": a.edges[1][p, rows] * k,
             "coverage": a.coverage_factor[p, rows],
             "verdict": np.array(VERDICTS, dtype=object)[codes],
-            "reason": talk,
+            "reason": told,
             "probable_cause": cause[rows],
             "next_measurement": following[rows],
             "unit": a.shown.unit,
