@@ -161,3 +161,15 @@ def test_withdrawing_a_calibration_lists_what_rests_on_it(year):
 def test_check_substances_of_the_demo_are_satisfactory(year):
     assert len(year.checks) == 8
     assert all(found.word == "satisfactory" for _, found in year.checks)
+
+
+@pytest.mark.parametrize("written", ["03.02.2025", "2025-13-01", "Feb 2025", ""])
+def test_a_date_that_cannot_be_read_is_told_and_stops_nothing(written):
+    table = pd.read_csv(DEMO, dtype=str, keep_default_na=False)
+    table.loc[table["calibration_id"] == "cal 2025-01-06", "date"] = written
+    found = energy.reduce_runs(table)
+    r = record(found)
+    assert "cal 2025-01-06" not in r.history("bench 2").ids
+    assert len(r.history("bench 2").ids) == 12
+    assert not written or any("year-month-day" in p.what for p in found.problems)
+    assert [r.runs["run_id"][i] for i in r.runs.index[r.controls.outcome == FAILED]] == ["C36z"]

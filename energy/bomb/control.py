@@ -67,6 +67,13 @@ class Controls:
     blanks: list[Blank] = field(default_factory=list)
 
 
+def _in_order(runs: pd.DataFrame) -> NDArray[np.intp]:
+    """Rows as they were fired: by date, then as they stand; a date that cannot be read keeps its row's place."""
+    text = runs["date"].astype(str)
+    dates = text.where(text.str.fullmatch(r"\d{4}-\d{2}-\d{2}.*")).ffill().fillna("").to_numpy()
+    return np.asarray(np.lexsort((np.arange(len(runs)), dates)), dtype=np.intp)
+
+
 def judge(
     runs: pd.DataFrame, assigned: Mapping[str, Assigned] | None = None, every: int | None = None, width: float = ACTION
 ) -> Controls:
@@ -82,7 +89,7 @@ def judge(
     kind, status = runs["kind"].to_numpy(), runs["status"].to_numpy()
     value, u = runs["gross_energy"].to_numpy(dtype=float), runs["u"].to_numpy(dtype=float)
     material, instrument = runs["sample_id"].astype(str).to_numpy(), runs["instrument"].astype(str).to_numpy()
-    order = np.lexsort((np.arange(n), runs["date"].astype(str).to_numpy()))
+    order = _in_order(runs)
     history: dict[tuple[str, str], list[float]] = {}
     open_: dict[str, list[int]] = {}
     failed: dict[str, int] = {}

@@ -23,6 +23,14 @@ if TYPE_CHECKING:
 FIRST = 6
 
 
+def day_of(text: str) -> datetime.date | None:
+    """A date written year-month-day; None for anything else, which the sheet's reader has told."""
+    try:
+        return datetime.date.fromisoformat(text[:10])
+    except ValueError:
+        return None
+
+
 @dataclass(frozen=True)
 class History:
     """One instrument's heat capacities: ids, dates, days since the first, J/K, u, chart, sums, drift, (n,) reasons."""
@@ -51,19 +59,18 @@ class Record:
     @property
     def instruments(self) -> list[str]:
         """Instruments with a calibration."""
-        return list(dict.fromkeys(c.instrument for c in self.found.calibrations if c.date))
+        return list(dict.fromkeys(c.instrument for c in self.found.calibrations if day_of(c.date)))
 
     def history(self, instrument: str) -> History:
         """Heat capacities over time. Raises WrongUse for an unknown instrument."""
-        mine = sorted(
-            (c for c in self.found.calibrations if c.instrument == instrument and c.date), key=lambda c: c.date
-        )
+        dated = [(day, c) for c in self.found.calibrations if c.instrument == instrument and (day := day_of(c.date))]
+        mine = [c for _, c in sorted(dated, key=lambda found: found[0])]
         if not mine:
             raise WrongUse(
                 f"No dated calibration of '{instrument}' is in the record.",
                 f"There are: {', '.join(self.instruments)}.",
             )
-        days = np.array([float(datetime.date.fromisoformat(c.date[:10]).toordinal()) for c in mine])
+        days = np.array([float(day.toordinal()) for day, _ in sorted(dated, key=lambda found: found[0])])
         values, u = np.array([c.mean for c in mine]), np.array([c.u for c in mine])
         first = individuals(values[:FIRST])
         # the scatter of a mean is no less than its own u

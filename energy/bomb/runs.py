@@ -6,6 +6,7 @@ sheet; control charts and the calorimeter's record read these names.
 
 from __future__ import annotations
 
+import datetime
 import difflib
 import re
 import tomllib
@@ -401,10 +402,25 @@ class _Reader:
         if not text:
             return ""
         match = re.fullmatch(r"(\d{4}-\d{2}-\d{2})([ T]00:00(:00)?)?", text)
-        if match is None:
-            self.tell(i, "this date is not written year-month-day.", "Write it as 2026-05-31.", column, text, "warning")
+        if match is None or not _is_day(match[1]):
+            self.tell(
+                i,
+                "this date is not written year-month-day, or is no day.",
+                "Write it as 2026-05-31.",
+                column,
+                text,
+                "warning",
+            )
             return text
         return match[1]
+
+
+def _is_day(text: str) -> bool:
+    try:
+        datetime.date.fromisoformat(text)
+    except ValueError:
+        return False
+    return True
 
 
 def _range(entry: RunColumn, scale: float) -> str:

@@ -64,7 +64,7 @@ def health(r: Record, days: int) -> None:
     if len(r.instruments) > 1:
         instrument = st.selectbox("Instrument", r.instruments, key="record_instrument")
     h = r.history(instrument)
-    st.subheader(f"Heat capacity of {instrument}", anchor=False)
+    st.subheader(f"Heat capacity of {instrument or 'the calorimeter'}", anchor=False)
     own = None if days == int(constant("recalibration_days")) else days
     for sentence in record_work.headline(h, r, datetime.date.today(), own):
         st.markdown(screen.plain(sentence))
