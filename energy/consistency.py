@@ -28,7 +28,30 @@ BASIS_WORDS = {"as_is": "as is", "dry_matter": "of dry matter"}
 
 def find(samples: Samples, feed: bool) -> list[Problem]:
     """Values that contradict what others of the same sample say. feed : crude protein is N x 6.25 by definition."""
-    return _protein_and_nitrogen(samples, feed) + [p for name in LEFT for p in _not_what_is_left(samples, name)]
+    twice = [p for name in LEFT for p in _not_what_is_left(samples, name)]
+    return _protein_and_nitrogen(samples, feed) + twice + _less_than_nothing(samples, feed)
+
+
+def _less_than_nothing(samples: Samples, feed: bool) -> list[Problem]:
+    """Determinations that add up to more than the whole, so that less than nothing is left as carbohydrate."""
+    name = "nitrogen_free_extract" if feed else "carbohydrate_by_difference"
+    if name in samples.columns:
+        return []
+    rules, choice = derived_rules()[name], rule_choices(samples)[name]
+    by_difference = np.isin(choice, [k for k, rule in enumerate(rules, 1) if "solids" in rule.requires])
+    if not by_difference.any():
+        return []
+    left, u = quantity_figures(samples, name)
+    with np.errstate(invalid="ignore"):
+        off = by_difference & (left < -(2 * np.nan_to_num(u) + ROUNDING))
+    basis = BASIS_WORDS[working_basis(samples, rule_choices(samples))]
+    title = dictionary()[name].title
+    return [
+        Problem(f"the determinations add up to {100 * (1 - left[i]):.4g} g per 100 g {basis}: {100 * -left[i]:.2g} g less than nothing is "
+                f"left as {title}. It is computed with as it stands.", "Check the determinations and their bases.", samples.source,
+                None if samples.rows is None else int(samples.rows[i]), name, f"{100 * left[i]:.4g}", "warning", str(samples.ids[i]))
+        for i in np.flatnonzero(off).tolist()
+    ]  # fmt: skip
 
 
 def _not_what_is_left(samples: Samples, name: str) -> list[Problem]:

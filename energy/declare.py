@@ -118,6 +118,8 @@ class Declared:
 
     def text(self, unit: str, i: int) -> str:
         """The figure as the law prints it; with '(no rule)' where none was found."""
+        if self.computed[unit][i] < 0:
+            return "below zero: mend the composition"
         rule = self.rounding_rule(unit, i)
         if rule is not None and rule.kind == "step" and not rule.printed and rule.step >= 1:
             return f"{self.rounded[unit].value[i]:.0f}"

@@ -82,3 +82,29 @@ def test_carbohydrate_by_difference_of_a_food(carbohydrate, told):
 def test_carbohydrate_that_was_determined_may_differ():
     row = {"sample_id": "bread", **FOOD, "available carbohydrate [g/100 g as is]": 45.0}
     assert energy.assess(pd.DataFrame([row]), target="human").problems == []
+
+
+def test_more_than_the_whole_is_told_with_its_amount():
+    """95 + 9 + 2 + 3 = 109 g per 100 g."""
+    row = {
+        "sample_id": "s",
+        "moisture [%]": 95.0,
+        "protein [g/100 g as is]": 9.0,
+        "fat [g/100 g as is]": 2.0,
+        "ash [g/100 g as is]": 3.0,
+    }
+    told = [p for p in energy.assess(pd.DataFrame([row]), target="human").problems if "add up to" in p.what]
+    assert len(told) == 1
+    assert "109 g per 100 g as is: 9 g less than nothing" in told[0].what
+    assert told[0].row == 2
+
+
+def test_the_scatter_of_a_food_without_carbohydrate_is_not_told():
+    row = {
+        "sample_id": "s",
+        "moisture [%]": 74.0,
+        "protein [g/100 g as is]": 23.1,
+        "fat [g/100 g as is]": 2.0,
+        "ash [g/100 g as is]": 1.1,
+    }
+    assert not [p for p in energy.assess(pd.DataFrame([row]), target="human").problems if "add up to" in p.what]
