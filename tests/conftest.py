@@ -4,6 +4,11 @@ import os
 from pathlib import Path
 
 import pytest
+from hypothesis import settings
+
+# how long one example takes says nothing of the law it tests, and much of what else the machine is doing
+settings.register_profile("unhurried", deadline=None)
+settings.load_profile("unhurried")
 
 
 @pytest.hookimpl(hookwrapper=True)
