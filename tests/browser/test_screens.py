@@ -85,7 +85,9 @@ def test_verdicts_stand_on_the_first_screen(page, tmp_path):
 
 
 def test_a_planted_slip_is_told_and_opens_its_sample(page, tmp_path):
-    expect(page.get_by_text("looks like kilocalories entered as kilojoules")).to_be_visible(timeout=60_000)
+    # the board's own cell holds the words as well, once it is drawn: what is read here is the sentence below it
+    sentence = page.get_by_test_id("stMarkdown").filter(has_text="looks like kilocalories entered as kilojoules")
+    expect(sentence.first).to_be_visible(timeout=60_000)
     page.get_by_role("button", name="Open F01").click()
     ready(page, "Sample")
     expect(page.get_by_text("✕ discordant", exact=True)).to_be_visible(timeout=60_000)
