@@ -27,6 +27,11 @@ def test_the_first_signal_is_at_observation_29_and_began_after_22():
     assert found.since_upper[28] + 1 == 22
 
 
+def test_a_missing_value_leaves_the_sums_where_they_are():
+    """By hand: 2 above the centre less 0.5, three times, the gap passed over."""
+    assert cusum([12, 12, np.nan, 12], 10.0, 1.0).upper == pytest.approx([1.5, 3.0, 3.0, 4.5])
+
+
 @given(st.lists(st.floats(-5, 5), min_size=1, max_size=40))
 def test_sums_without_a_loop_are_those_of_the_recursion(values):
     found, high, low = cusum(values, 0.0, 1.0), 0.0, 0.0

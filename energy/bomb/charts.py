@@ -82,8 +82,9 @@ def cusum(values: ArrayLike, centre: float, sigma: float, k: float | None = None
     x = np.asarray(values, dtype=float)
     reference = (constant("cusum_reference") if k is None else k) * sigma
     decision = (constant("cusum_decision") if h is None else h) * sigma
-    upper, since_up = _sums(np.nan_to_num(x - centre, nan=0.0) - reference)
-    lower, since_down = _sums(np.nan_to_num(centre - x, nan=0.0) - reference)
+    # a value that is missing leaves both sums where they are
+    upper, since_up = _sums(np.nan_to_num(x - centre - reference, nan=0.0))
+    lower, since_down = _sums(np.nan_to_num(centre - x - reference, nan=0.0))
     return Cusum(upper, lower, reference, decision, since_up, since_down)
 
 

@@ -123,7 +123,11 @@ def overdue(record: Record) -> list[str]:
     """Runs at which a control was overdue, in words; a few."""
     c = record.controls
     mine = np.flatnonzero(c.overdue > 0)
-    return [f"{record.runs['run_id'].iloc[int(i)]}: {c.told[int(i)]}" for i in mine[:5]]
+    told = [
+        f"{record.runs['run_id'].iloc[i]}: a control is overdue, {c.overdue[i]} runs since the last one that passed"
+        for i in mine[:5]
+    ]
+    return [*told, f"and {len(mine) - 5} more runs without a control"] if len(mine) > 5 else told
 
 
 def checks(record: Record) -> pd.DataFrame:
