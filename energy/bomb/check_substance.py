@@ -1,9 +1,10 @@
 """A pure substance burnt like a sample: does the calorimeter give its heat?
 
 The heats of the literature are of standard conditions and of masses in vacuum; a bomb gives heat per gram weighed in air
-under its own conditions. Benzoic acid, certified on both bases, is held against its heat weighed in air. It shows how much that can be: its certificate (bomb conditions) lies 0.078 % above its
-standard energy, and its value weighed in air 0.077 % above that in vacuum. Both stand as rectangular components of u of the
-reference, so that zeta does not promise more than is known.
+under its own conditions. Benzoic acid, certified on both bases, is held against its heat weighed in air. It shows how much
+that can be: its certificate (bomb conditions) lies 0.078 % above its standard energy, and its value weighed in air 0.077 %
+above that in vacuum. Both stand as rectangular components of u of the reference, so that zeta does not promise more than is
+known.
 """
 
 from __future__ import annotations
