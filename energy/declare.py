@@ -12,7 +12,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from energy import rounding
-from energy.catalogue.records import System
+from energy.catalogue.records import SOURCE_STATUS, System
 from energy.conformity import (
     DECISION_RULES,
     NO_RULE,
@@ -354,6 +354,6 @@ def warnings_of(d: Declared) -> list[str]:
         for claim, flips in d.claim_flips.items():
             if flips[i]:
                 told.append(f"rounding decides whether the claim '{claim.claim}' ({claim.at_most:g} {claim.unit}, {claim.source}, "
-                            f"{claim.locator}) is met")  # fmt: skip
+                            f"{claim.locator}; {SOURCE_STATUS[claim.source_status]}) is met")  # fmt: skip
         found.append("; ".join(told))
     return found

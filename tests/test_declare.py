@@ -11,6 +11,7 @@ import energy
 from energy.catalogue.reader import systems
 from energy.declare import Lot, declare, outcome_words, warnings_of
 from energy.problems import WrongUse
+from energy.report import label_work
 from energy.samples import Samples
 
 BREAD = {"moisture": 0.40, "crude_protein": 0.096, "crude_fat": 0.024, "available_carbohydrate": 0.396, "total_dietary_fibre": 0.071,
@@ -318,3 +319,33 @@ def test_evidence_holds_the_declared_values(file, tmp_path):
     heads = [cell.value for cell in sheet[1]]
     assert sheet.cell(2, heads.index("verdict") + 1).value == "within"
     assert json.loads((tmp_path / "e.json").read_text())["declared"][0]["rounded_kj"] == 982
+
+
+def test_a_claim_that_is_recalled_says_so():
+    """Conditions of Regulation 1924/2006 stand as recalled in label_claims.csv; 40.3 kcal prints as 40."""
+    grams = {c: np.array([x]) for c, x in {"crude_protein": 0.02, "crude_fat": 0.0, "available_carbohydrate": 0.08075}.items()}  # fmt: skip
+    assert (
+        "'low energy', solids; recalled, not yet checked at the source"
+        in warnings_of(judged("eu_1169_2011", Samples.from_arrays(grams)))[0]
+    )
+
+
+@pytest.mark.parametrize(("law", "known"), [
+    ("eu_1169_2011", "read in a second document"), ("uk_1169_2011_assimilated", "recalled, not yet checked at the source"),
+])  # fmt: skip
+def test_rounding_of_grams_and_of_both_units_carries_place_and_how_it_is_known(law, known):
+    """EU grams: read in a summary of the guidance; that the United Kingdom rounds alike is recalled (label_laws.csv)."""
+    rows = label_work.rules_table([judged(law, bread(kj=982))])
+    found = rows[rows["about"].str.startswith("rounding: ")]
+    grams = found[found["about"].str.contains("fat")].iloc[0]
+    assert "10 g or more: nearest 1 g" in grams["rule"]
+    assert "rounding table" in grams["where"]
+    assert grams["how it is known"] == known
+    assert {"kJ", "kcal"} <= set(", ".join(found["about"].str.removeprefix("rounding: ")).split(", "))
+
+
+def test_every_class_of_a_rounding_rule_is_shown():
+    """21 CFR 101.9(c)(1): under 5, up to 50, above 50 kcal."""
+    rows = label_work.rules_table([judged("us_21cfr_101_9_b", bread(kcal=210))])
+    rule = rows.loc[rows["about"] == "rounding: kcal", "rule"].item()
+    assert all(words in rule for words in ("less than 5 kcal", "up to and including 50 kcal", "above 50 kcal"))

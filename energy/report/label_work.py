@@ -10,11 +10,12 @@ from typing import TYPE_CHECKING, Any, Protocol
 
 import numpy as np
 
-from energy import views
+from energy import rounding, views
 from energy.catalogue import reader
-from energy.catalogue.records import SOURCE_STATUS
+from energy.catalogue.records import SOURCE_STATUS, weakest
 from energy.declare import PER_WORDS, Declared, declare, outcome_words, rule_words, warnings_of
 from energy.label_law import declares, label_law
+from energy.quantities import dictionary
 from energy.report.tables import check_ending, whole, workbook
 from energy.samples import Samples
 
@@ -198,23 +199,37 @@ def rules_table(found: Sequence[Declared]) -> pd.DataFrame:
     rows = []
     for d in found:
         law = label_law(d.law.id)
-        first = d.energy.leading
-        computed = np.flatnonzero(np.isfinite(d.computed[first]))
-        rule = d.rounding_rule(first, int(computed[0])) if len(computed) else None
         rows += [
             {"law": d.law.title, "about": "energy", "rule": f"{d.law.title}: sum of factors times grams",
              "where": d.law.citation if d.law.locator in d.law.citation else f"{d.law.citation}, {d.law.locator}", "how it is known": status(d.law.source_status)},
             {"law": "", "about": "tolerance", "rule": rule_words(d), "where": f"{d.rule.source}, {d.rule.locator}".strip(", "),
              "how it is known": status(d.rule.source_status)},
             {"law": "", "about": "what the tolerance holds for", "rule": d.rule.tested or "not said", "where": "", "how it is known": ""},
-            {"law": "", "about": "rounding", "rule": rule.words if rule else "no rule was found: nothing is rounded",
-             "where": f"{rule.source}, {rule.locator}" if rule else "", "how it is known": status(rule.source_status) if rule else ""},
+            *_rounding_rows(d),
             {"law": "", "about": "grams the energy is computed from",
              "rule": {"unrounded": "unrounded", "either": "unrounded or as printed"}.get(law.energy_from, "not said: both are shown"),
              "where": f"{law.source}, {law.locator}".strip(", "), "how it is known": status(law.source_status)},
             {"law": "", "about": "a figure by bomb", "rule": d.bomb, "where": "", "how it is known": ""},
         ]  # fmt: skip
     return pd.DataFrame(rows)
+
+
+def _rounding_rows(d: Declared) -> list[dict[str, str]]:
+    """The rules that energies and grams of these samples are rounded by, each once: rule sets often treat several alike."""
+    alike: dict[tuple[str, str, str], list[str]] = {}
+    for name, quantity, present in [
+        *((unit, f"energy_{unit}", True) for unit in d.computed),
+        *((dictionary()[q].title, q, bool(np.any(g > 0))) for q, g in d.label.printed.items()),
+    ]:
+        rules = rounding.rules(d.rules.rounding_set, quantity) if present else ()
+        if rules:
+            known = weakest([r.source_status for r in rules] + [x for x in (d.rules.rounding_status,) if x])
+            where = "; ".join(dict.fromkeys(f"{r.source}, {r.locator}" for r in rules))
+            alike.setdefault(("; ".join(r.words for r in rules), where, status(known)), []).append(name)
+        elif present:
+            alike.setdefault(("no rule was found: nothing is rounded", "", ""), []).append(name)
+    return [{"law": "", "about": f"rounding: {', '.join(names)}", "rule": words, "where": where, "how it is known": known}
+            for (words, where, known), names in alike.items()]  # fmt: skip
 
 
 def text(a: Holder, found: Sequence[Declared]) -> str:
